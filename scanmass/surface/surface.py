@@ -1,0 +1,59 @@
+"""The closed surface that is weighed, what of it was seen, and the other shapes the unseen part could have."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import Literal
+
+import numpy as np
+import numpy.typing as npt
+
+from scanmass.errors import Note
+
+FloatArray = npt.NDArray[np.float64]
+Underside = Literal["seen", "flat", "hollow", "unknown"]
+
+
+@dataclass(frozen=True)
+class Closure:
+    """One shape that what was not seen could have: its ten moments at unit density about the scan's origin."""
+
+    name: str
+    moments: FloatArray
+
+    def __post_init__(self) -> None:
+        if self.moments.shape != (10,) or not np.isfinite(self.moments).all():
+            raise ValueError(f"moments must be ten finite numbers, got {self.moments}")
+
+
+@dataclass(frozen=True)
+class Surface:
+    """A closed triangle mesh in metres, in the scan's frame, faces counter-clockwise seen from outside.
+
+    ``vertices`` (n, 3); ``faces`` (m, 3) int64: every edge has exactly two faces, cavities point inward;
+    ``inferred`` (m,) bool: no scan point lies near this face, the shape there is an inference;
+    ``source``: "points" (reconstructed) or "mesh" (the scan's own faces);
+    ``resolution``: edge length of the reconstruction, or the median edge of a mesh, in metres;
+    ``closures``: shapes that bracket what was not seen, empty where everything was;
+    ``coarse_moments`` (10,): of the surface before refinement, the reconstruction's own doubt, or None.
+    """
+
+    vertices: FloatArray
+    faces: npt.NDArray[np.int64]
+    inferred: npt.NDArray[np.bool_]
+    source: Literal["points", "mesh"]
+    resolution: float
+    underside: Underside
+    shells: int
+    closures: tuple[Closure, ...] = ()
+    coarse_moments: FloatArray | None = None
+    assumptions: tuple[Note, ...] = field(default=())
+    warnings: tuple[Note, ...] = field(default=())
+
+    def __post_init__(self) -> None:
+        if self.vertices.ndim != 2 or self.vertices.shape[1] != 3 or not np.isfinite(self.vertices).all():
+            raise ValueError(f"vertices must be finite and (n, 3), got {self.vertices.shape}")
+        if self.faces.ndim != 2 or self.faces.shape[1] != 3:
+            raise ValueError(f"faces must be (m, 3), got {self.faces.shape}")
+        if self.inferred.shape != (len(self.faces),):
+            raise ValueError(f"inferred must be ({len(self.faces)},), got {self.inferred.shape}")
