@@ -1,0 +1,81 @@
+"""Refuses characters that look like numbers or units and are read differently by different people."""
+
+from __future__ import annotations
+
+import re
+import unicodedata
+from fractions import Fraction
+from typing import Final
+
+from scanmass.errors import UserFault
+
+_WELCOME: Final = set("±µμ°³")
+_INSTEAD: Final = {
+    "−": "a plain '-'",
+    "–": "'to' for a range, or a plain '-' for a negative number",
+    "—": "'to' for a range, or a plain '-' for a negative number",
+    "″": "in for inches",
+    "”": "in for inches",
+    "“": "in for inches",
+    "′": "ft for feet",
+    "’": "ft for feet",
+    "²": "a plain 2, as in m2",
+    "×": "the number with an exponent, as in 1.2e3",
+    "·": "a point for the decimals",
+}
+
+
+def screen(text: str) -> str:
+    """The text without the space around it, once nothing in it can be taken for something else.
+
+    Raises
+    ------
+    UserFault
+        If it is empty, or holds a comma, a quote mark, a fraction or a character that is not plain.
+
+    >>> screen("  12 mm ")
+    '12 mm'
+    """
+    text = text.strip(" \t\r\n")
+    if not text:
+        raise UserFault("nothing is given", allowed="a number and its unit are needed, like '12 mm'")
+    for character in text:
+        if not (" " <= character <= "~" or character in _WELCOME):
+            _refuse_character(text, character)
+    if "," in text:
+        _refuse_comma(text)
+    if '"' in text or "'" in text:
+        raise UserFault(f"{text!r} has a quote mark", allowed="write in for inches and ft for feet")
+    if fraction := re.search(r"(?:(\d+)\s+)?(\d+)\s*/\s*(\d+)", text):
+        _refuse_fraction(text, fraction)
+    return text
+
+
+def _refuse_character(text: str, character: str) -> None:
+    name = unicodedata.name(character, f"U+{ord(character):04X}").lower()
+    instead = _INSTEAD.get(character)
+    if instead is None and character.isspace():
+        instead = "a plain space"
+    if instead is None and unicodedata.numeric(character, None) is not None:
+        instead = "plain digits"
+    seen = f"{text!r} has a character that is not read here, {name}"
+    raise UserFault(seen, allowed=f"write {instead or 'plain letters and digits'}")
+
+
+def _refuse_comma(text: str) -> None:
+    point, joined = text.replace(",", "."), text.replace(",", "")
+    if re.search(r",\s", text):
+        raise UserFault(f"'{text}' has a comma", allowed="write numbers apart by spaces, and decimals with a point")
+    if re.search(r"\d,\d{3}(?!\d)", text) and not re.search(r"\d,\d{3},?\d{1,2}(?!\d)|\.\d*,", text):
+        fix = f"write '{joined}'" if text.count(",") > 1 or "." in text else f"write '{joined}' or '{point}'"
+    else:
+        fix = f"write '{point}'"
+    raise UserFault(f"'{text}' has a comma", allowed=f"decimals take a point, thousands no mark: {fix}")
+
+
+def _refuse_fraction(text: str, fraction: re.Match[str]) -> None:
+    whole, above, below = fraction.groups()
+    fix = "write it as a decimal"
+    if int(below[:9]) != 0 and len(below) < 9 and len(above) < 9:
+        fix += f": {float(int((whole or '0')[:9]) + Fraction(int(above), int(below))):.10g}"
+    raise UserFault(f"'{text}' has a fraction", allowed=fix)

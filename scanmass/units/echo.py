@@ -1,0 +1,154 @@
+"""SI to text: the doubt to two digits, the value to the same place, the unit a reader knows."""
+
+from __future__ import annotations
+
+from decimal import ROUND_CEILING, ROUND_FLOOR, ROUND_HALF_EVEN, Decimal
+from typing import Final, Literal
+
+import numpy as np
+
+from scanmass.doubt import Figure
+from scanmass.units.table import UNITS
+
+SYSTEMS: Final = {
+    "metric": {
+        "length": "mm",
+        "mass": "kg",
+        "force": "N",
+        "density": "kg/m3",
+        "area": "m2",
+        "volume": "L",
+        "inertia": "kg m2",
+        "angle": "deg",
+        "ratio": "%",
+    },
+    "us": {
+        "length": "in",
+        "mass": "lb",
+        "force": "lbf",
+        "density": "lb/ft3",
+        "area": "ft2",
+        "volume": "ft3",
+        "inertia": "lb ft2",
+        "angle": "deg",
+        "ratio": "%",
+    },
+}
+
+NO_BOUND: Final = "(no bound)"
+_EVEN_SIDES: Final = 0.05
+"""Sides that differ by less than this share of their mean are printed as one ±."""
+
+
+def system(name: Literal["metric", "us"]) -> dict[str, str]:
+    """The unit name each dimension is printed in.
+
+    >>> system("us")["mass"], system("metric")["length"]
+    ('lb', 'mm')
+    """
+    return dict(SYSTEMS[name])
+
+
+def rounded(value: float, half_width: float) -> tuple[str, str]:
+    """The half-width to two significant digits, the value to the same place (GUM 7.2.6).
+
+    Both are numbers in one unit. A half-width of zero leaves the value with the digits it has, up to ten.
+
+    Raises
+    ------
+    ValueError
+        If either is not finite or the half-width is negative.
+
+    >>> rounded(148.6372, 0.5291)
+    ('148.64', '0.53')
+    >>> rounded(1234.5, 567.0)
+    ('1230', '570')
+    >>> rounded(2.0, 0.0996)
+    ('2.00', '0.10')
+    """
+    if not (np.isfinite(value) and np.isfinite(half_width) and half_width >= 0):
+        raise ValueError(f"cannot round {value} ± {half_width}")
+    if half_width == 0:
+        return _plain(value), "0"
+    place = _place(half_width)
+    return _at(value, place), _at(half_width, place)
+
+
+def show(figure: Figure, unit: str) -> str:
+    """The figure as text in ``unit``, a name of the table.
+
+    ``±`` is the half-width at 95 %. A figure alike anywhere in a range prints as that range; one with uneven
+    sides as its value and [low, high], rounded outward; one of which nothing can be claimed says so.
+
+    Raises
+    ------
+    ValueError
+        If the figure is an array.
+
+    >>> show(Figure.normal(148.6, 0.25), "kg")
+    '148.6 ± 0.5 kg'
+    >>> show(Figure.uniform(0.004, 0.009), "mm")
+    '4 to 9 mm'
+    >>> show(Figure(2.0, 0.1, 1.913, 2.301), "kg")
+    '2.00 [1.91, 2.31] kg'
+    >>> show(Figure(2.0), "kg")
+    '2 kg (no bound)'
+    """
+    if np.ndim(figure.value) != 0:
+        raise ValueError("only single figures are shown; show an array one element at a time")
+    value = _in(float(figure.value), unit)
+    behind = f" {unit}" if unit else ""
+    if figure.spread == "exact":
+        return f"{_plain(value)}{behind}"
+    if figure.low is None or figure.high is None:
+        return f"{_plain(value, 6)}{behind} {NO_BOUND}"
+    low, high = _in(float(figure.low), unit), _in(float(figure.high), unit)
+    if figure.spread == "uniform":
+        return f"{_plain(low)} to {_plain(high)}{behind}"
+    if figure.spread == "normal" and figure.std is not None:
+        return f"{_declared(value, _in(2 * float(figure.std), unit))}{behind}"
+    below, above = value - low, high - value
+    if abs(above - below) <= _EVEN_SIDES * (above + below) / 2:
+        return f"{_pair(*rounded(value, max(above, below)))}{behind}"
+    place = _place((high - low) / 2)
+    ends = f"[{_at(low, place, ROUND_FLOOR)}, {_at(high, place, ROUND_CEILING)}]"
+    return f"{_at(value, place)} {ends}{behind}"
+
+
+def _in(value: float, unit: str) -> float:
+    """SI to the unit; the last rounding digit of the division is dropped."""
+    return float(f"{value / float(UNITS[unit].factor):.14g}")
+
+
+def _place(half_width: float) -> int:
+    """The power of ten of the second significant digit of the rounded half-width."""
+    return Decimal(f"{half_width:.1e}").adjusted() - 1
+
+
+def _at(value: float, place: int, rounding: str = ROUND_HALF_EVEN) -> str:
+    """The value rounded to the power of ten ``place``, without an exponent."""
+    step = Decimal(1).scaleb(place)
+    digits = (Decimal(f"{value:.12e}") / step).to_integral_value(rounding) * step
+    text = f"{digits:f}"
+    return text.removeprefix("-") if digits == 0 else text
+
+
+def _plain(value: float, digits: int = 10) -> str:
+    """The value with the digits it has, no more than ``digits``, no exponent in everyday sizes."""
+    if value == 0:
+        return "0"
+    if not 1e-4 <= abs(value) < 1e9:
+        return f"{value:.{digits}g}"
+    return f"{Decimal(f'{value:.{digits}g}').normalize():f}"
+
+
+def _declared(value: float, half_width: float) -> str:
+    """A declared figure keeps the digits it was given in: a last zero on both sides tells nothing."""
+    left, right = rounded(value, half_width)
+    while "." in left and "." in right and left.endswith("0") and right.endswith("0"):
+        left, right = left[:-1].removesuffix("."), right[:-1].removesuffix(".")
+    return _pair(left, right)
+
+
+def _pair(value: str, half_width: str) -> str:
+    return f"{value} ± {half_width}"
