@@ -10,7 +10,7 @@ import pytest
 PACKAGE = Path(__file__).parents[1] / "scanmass"
 FLOORS = [
     {"errors", "doubt", "seeds", "progress"},
-    {"units"},  # half a floor up: it raises the faults and gives the figures of the ground floor
+    {"units", "libraries"},  # half a floor up: they raise the faults and give the figures of the ground floor
     {"geometry"},
     {"materials", "scans"},
     {"cloud"},
