@@ -9,7 +9,7 @@ from typing import Final
 
 from scanmass.errors import UserFault
 
-_WELCOME: Final = set("±µμ°³")
+_WELCOME: Final = set("±µμ°³\t")
 _INSTEAD: Final = {
     "−": "a plain '-'",
     "–": "'to' for a range, or a plain '-' for a negative number",
@@ -63,14 +63,20 @@ def _refuse_character(text: str, character: str) -> None:
 
 
 def _refuse_comma(text: str) -> None:
+    raise UserFault(f"'{text}' has a comma", allowed=f"decimals take a point, thousands no mark{_without_commas(text)}")
+
+
+def _without_commas(text: str) -> str:
+    """What to write instead, where that is clear: both readings of ``1,500``, one of ``1,5`` and ``1,500.5``."""
+    numbers = re.findall(r"[\d.,]+", text)
+    if any(re.search(r"\.\d*,|,\d*,(?!\d{3})|,(?!\d)", number) for number in numbers):
+        return ""
     point, joined = text.replace(",", "."), text.replace(",", "")
-    if re.search(r",\s", text):
-        raise UserFault(f"'{text}' has a comma", allowed="write numbers apart by spaces, and decimals with a point")
-    if re.search(r"\d,\d{3}(?!\d)", text) and not re.search(r"\d,\d{3},?\d{1,2}(?!\d)|\.\d*,", text):
-        fix = f"write '{joined}'" if text.count(",") > 1 or "." in text else f"write '{joined}' or '{point}'"
-    else:
-        fix = f"write '{point}'"
-    raise UserFault(f"'{text}' has a comma", allowed=f"decimals take a point, thousands no mark: {fix}")
+    thousands = [number for number in numbers if re.fullmatch(r"\d{1,3}(,\d{3})+(\.\d+)?", number)]
+    if any("," in number and number not in thousands for number in numbers):
+        return f": write '{point}'" if text.count(",") == len([n for n in numbers if "," in n]) else ""
+    several = any(number.count(",") > 1 or "." in number for number in thousands)
+    return f": write '{joined}'" if several else f": write '{joined}' or '{point}'"
 
 
 def _refuse_fraction(text: str, fraction: re.Match[str]) -> None:

@@ -93,11 +93,13 @@ def show(figure: Figure, unit: str) -> str:
     '2.00 [1.91, 2.31] kg'
     >>> show(Figure(2.0), "kg")
     '2 kg (no bound)'
+    >>> show(Figure(2.345e-6, 1e-8, 2.325e-6, 2.365e-6), "kg m2")
+    '2.345e-6 ± 0.020e-6 kg m2'
     """
     if np.ndim(figure.value) != 0:
         raise ValueError("only single figures are shown; show an array one element at a time")
-    value = _in(float(figure.value), unit)
     behind = f" {unit}" if unit else ""
+    value = _in(float(figure.value), unit)
     if figure.spread == "exact":
         return f"{_plain(value)}{behind}"
     if figure.low is None or figure.high is None:
@@ -107,12 +109,20 @@ def show(figure: Figure, unit: str) -> str:
         return f"{_plain(low)} to {_plain(high)}{behind}"
     if figure.spread == "normal" and figure.std is not None:
         return f"{_declared(value, _in(2 * float(figure.std), unit))}{behind}"
+    if low == high:
+        return f"{_plain(value)}{behind}"
+    return f"{_bounded(value, low, high)}{behind}"
+
+
+def _bounded(value: float, low: float, high: float) -> str:
+    """``value ± half-width`` where the sides are even, else ``value [low, high]`` rounded outward."""
     below, above = value - low, high - value
-    if abs(above - below) <= _EVEN_SIDES * (above + below) / 2:
-        return f"{_pair(*rounded(value, max(above, below)))}{behind}"
+    if min(below, above) > 0 and abs(above - below) <= _EVEN_SIDES * (above + below) / 2:
+        return _pair(value, max(above, below))
     place = _place((high - low) / 2)
-    ends = f"[{_at(low, place, ROUND_FLOOR)}, {_at(high, place, ROUND_CEILING)}]"
-    return f"{_at(value, place)} {ends}{behind}"
+    power = _power(max(abs(low), abs(high)))
+    ends = f"[{_at(low, place, power, ROUND_FLOOR)}, {_at(high, place, power, ROUND_CEILING)}]"
+    return f"{_at(value, place, power)} {ends}"
 
 
 def _in(value: float, unit: str) -> float:
@@ -125,12 +135,31 @@ def _place(half_width: float) -> int:
     return Decimal(f"{half_width:.1e}").adjusted() - 1
 
 
-def _at(value: float, place: int, rounding: str = ROUND_HALF_EVEN) -> str:
-    """The value rounded to the power of ten ``place``, without an exponent."""
+def _power(value: float) -> int:
+    """The power of ten to write apart: none (0) in everyday sizes, so that nobody has to count zeros."""
+    power = Decimal(f"{value:.1e}").adjusted()
+    return 0 if -4 < power < 9 else power
+
+
+def _at(value: float, place: int, power: int = 0, rounding: str = ROUND_HALF_EVEN) -> str:
+    """The value rounded to the power of ten ``place``; the power of ten ``power`` is written apart."""
     step = Decimal(1).scaleb(place)
-    digits = (Decimal(f"{value:.12e}") / step).to_integral_value(rounding) * step
+    digits = ((Decimal(f"{value:.12e}") / step).to_integral_value(rounding) * step).scaleb(-power)
     text = f"{digits:f}"
-    return text.removeprefix("-") if digits == 0 else text
+    return (text.removeprefix("-") if digits == 0 else text) + (f"e{power}" if power else "")
+
+
+def _pair(value: float, half_width: float) -> str:
+    place, power = _place(half_width), _power(max(abs(value), half_width))
+    return f"{_at(value, place, power)} ± {_at(half_width, place, power)}"
+
+
+def _declared(value: float, half_width: float) -> str:
+    """A declared figure keeps the digits it was given in: a last zero on both sides tells nothing."""
+    left, between, right = _pair(value, half_width).partition(" ± ")
+    while "." in left and "." in right and left.endswith("0") and right.endswith("0"):
+        left, right = left[:-1].removesuffix("."), right[:-1].removesuffix(".")
+    return f"{left}{between}{right}"
 
 
 def _plain(value: float, digits: int = 10) -> str:
@@ -140,15 +169,3 @@ def _plain(value: float, digits: int = 10) -> str:
     if not 1e-4 <= abs(value) < 1e9:
         return f"{value:.{digits}g}"
     return f"{Decimal(f'{value:.{digits}g}').normalize():f}"
-
-
-def _declared(value: float, half_width: float) -> str:
-    """A declared figure keeps the digits it was given in: a last zero on both sides tells nothing."""
-    left, right = rounded(value, half_width)
-    while "." in left and "." in right and left.endswith("0") and right.endswith("0"):
-        left, right = left[:-1].removesuffix("."), right[:-1].removesuffix(".")
-    return _pair(left, right)
-
-
-def _pair(value: str, half_width: str) -> str:
-    return f"{value} ± {half_width}"

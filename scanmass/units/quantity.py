@@ -81,17 +81,19 @@ def parse_noted(
     >>> round(figure.value, 3), notes[0].code
     (101.972, 'force-as-mass')
     """
+    if dimension not in LIMITS:
+        raise ValueError(f"no dimension {dimension!r}; there are {', '.join(LIMITS)}")
     within = LIMITS[dimension] if limits is None else limits
     first, link, second = _terms(text, dimension)
     accepted = ("mass", "force") if dimension == "mass" else (dimension,)
     if second is None:
-        unit = unit_named_for(first, accepted, text)
+        unit = _unit_of(first, accepted, text)
         value = _si(first, unit, dimension)
         _check_limits(text, value, dimension, within)
         return Figure.exact(value), _noted(text, value, (unit,), dimension)
     _refuse_mixed(text, first, link, second, dimension)
     first = first if first.unit else _Term(first.text, first.number, second.unit)
-    units = (unit_named_for(first, accepted, text), unit_named_for(second, accepted, text))
+    units = (_unit_of(first, accepted, text), _unit_of(second, accepted, text))
     if units[0].dimension != units[1].dimension:
         raise UserFault(f"'{text}' mixes {units[0].dimension} and {units[1].dimension}", allowed="use one unit")
     one, two = _si(first, units[0], dimension), _si(second, units[1], dimension)
@@ -101,7 +103,7 @@ def parse_noted(
     return figure, _noted(text, float(figure.value), units, dimension)
 
 
-def unit_named_for(term: _Term, dimensions: tuple[str, ...], text: str) -> Unit:
+def _unit_of(term: _Term, dimensions: tuple[str, ...], text: str) -> Unit:
     """The unit of a term; the fault shows the whole text."""
     try:
         return unit_named(term.unit, dimensions)
@@ -136,6 +138,8 @@ def _term(part: str, text: str, dimension: str) -> _Term:
         raise UserFault(f"'{text}': '+-' is not read", allowed="write '±' or '+/-'")
     if re.match(r"(-|\.\.+)\s*[\d.]", unit):
         raise UserFault(f"'{text}' looks like a range", allowed="write a range like '4 to 9 mm'")
+    if unit.startswith(".") and not re.match(r"\.\d", unit):
+        raise UserFault(f"'{text}' has a point without decimals", allowed=f"write '{number}' or '{number}.0'")
     if re.match(r"[\d_.]", unit):
         raise UserFault(
             f"'{text}' has more than one number before the unit",
@@ -185,7 +189,8 @@ def _range(text: str, low: float, high: float, first: _Term, second: _Term) -> F
     if low == high:
         raise UserFault(f"'{text}' is a range of no width", allowed="write the number alone, or with its ±")
     if low > high:
-        fix = f"write '{second.text} {second.unit} to {first.text} {first.unit}'".replace("  ", " ").replace(" '", "'")
+        ends = [f"{term.text} {term.unit}".strip() for term in (second, first)]
+        fix = f"write '{ends[0]} to {ends[1]}'"
         raise UserFault(f"'{text}' runs from high to low", allowed=fix)
     return Figure.uniform(low, high)
 
