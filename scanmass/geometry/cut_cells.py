@@ -73,8 +73,12 @@ def _clip(polygon, n, axis, level, keep_below, out):  # type: ignore[no-untyped-
 @njit(cache=True)
 def _clip_to_column(triangle, x0, x1, y0, y1, one, two):  # type: ignore[no-untyped-def]
     """The part of a triangle inside a column, in ``one``; returns its number of corners."""
+    inside = True
     for k in range(3):
         one[k] = triangle[k]
+        inside = inside and x0 <= one[k, 0] <= x1 and y0 <= one[k, 1] <= y1
+    if inside:
+        return 3
     n = _clip(one, 3, 0, x0, False, two)
     n = _clip(two, n, 0, x1, True, one)
     n = _clip(one, n, 1, y0, False, two)

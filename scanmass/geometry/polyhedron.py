@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from numba import njit, prange
 
 from scanmass.geometry.moments import monomials, translated
 
@@ -16,37 +16,37 @@ FloatArray = npt.NDArray[np.float64]
 FaceArray = npt.NDArray[np.int64]
 
 
-@njit(cache=True, fastmath=False)
+# Sums in runs of fixed length keep the rounding of a million faces near that of a thousand, and make the answer
+# the same for any number of threads.
+_RUN = 4096
+
+
+@njit(cache=True, parallel=True)
 def _tetrahedron_sums(vertices, faces, apex):  # type: ignore[no-untyped-def]
-    total = np.zeros(10)
-    part = np.zeros(10)
-    for k in range(faces.shape[0]):
-        a0 = vertices[faces[k, 0], 0] - apex[0]
-        a1 = vertices[faces[k, 0], 1] - apex[1]
-        a2 = vertices[faces[k, 0], 2] - apex[2]
-        b0 = vertices[faces[k, 1], 0] - apex[0]
-        b1 = vertices[faces[k, 1], 1] - apex[1]
-        b2 = vertices[faces[k, 1], 2] - apex[2]
-        c0 = vertices[faces[k, 2], 0] - apex[0]
-        c1 = vertices[faces[k, 2], 1] - apex[1]
-        c2 = vertices[faces[k, 2], 2] - apex[2]
-        det = a0 * (b1 * c2 - b2 * c1) + a1 * (b2 * c0 - b0 * c2) + a2 * (b0 * c1 - b1 * c0)
-        s0, s1, s2 = a0 + b0 + c0, a1 + b1 + c1, a2 + b2 + c2
-        part[0] += det
-        part[1] += det * s0
-        part[2] += det * s1
-        part[3] += det * s2
-        part[4] += det * (a0 * a0 + b0 * b0 + c0 * c0 + s0 * s0)
-        part[5] += det * (a1 * a1 + b1 * b1 + c1 * c1 + s1 * s1)
-        part[6] += det * (a2 * a2 + b2 * b2 + c2 * c2 + s2 * s2)
-        part[7] += det * (a0 * a1 + b0 * b1 + c0 * c1 + s0 * s1)
-        part[8] += det * (a1 * a2 + b1 * b2 + c1 * c2 + s1 * s2)
-        part[9] += det * (a2 * a0 + b2 * b0 + c2 * c0 + s2 * s0)
-        # Sums in runs keep the rounding of a million faces near that of a thousand.
-        if k % 1024 == 1023:
-            total += part
-            part[:] = 0.0
-    return total + part
+    m = faces.shape[0]
+    runs = (m + _RUN - 1) // _RUN
+    parts = np.zeros((runs, 10))
+    for r in prange(runs):
+        part = np.zeros(10)
+        for k in range(r * _RUN, min((r + 1) * _RUN, m)):
+            i, j, h = faces[k, 0], faces[k, 1], faces[k, 2]
+            a0, a1, a2 = vertices[i, 0] - apex[0], vertices[i, 1] - apex[1], vertices[i, 2] - apex[2]
+            b0, b1, b2 = vertices[j, 0] - apex[0], vertices[j, 1] - apex[1], vertices[j, 2] - apex[2]
+            c0, c1, c2 = vertices[h, 0] - apex[0], vertices[h, 1] - apex[1], vertices[h, 2] - apex[2]
+            det = a0 * (b1 * c2 - b2 * c1) + a1 * (b2 * c0 - b0 * c2) + a2 * (b0 * c1 - b1 * c0)
+            s0, s1, s2 = a0 + b0 + c0, a1 + b1 + c1, a2 + b2 + c2
+            part[0] += det
+            part[1] += det * s0
+            part[2] += det * s1
+            part[3] += det * s2
+            part[4] += det * (a0 * a0 + b0 * b0 + c0 * c0 + s0 * s0)
+            part[5] += det * (a1 * a1 + b1 * b1 + c1 * c1 + s1 * s1)
+            part[6] += det * (a2 * a2 + b2 * b2 + c2 * c2 + s2 * s2)
+            part[7] += det * (a0 * a1 + b0 * b1 + c0 * c1 + s0 * s1)
+            part[8] += det * (a1 * a2 + b1 * b2 + c1 * c2 + s1 * s2)
+            part[9] += det * (a2 * a0 + b2 * b0 + c2 * c0 + s2 * s0)
+        parts[r] = part
+    return parts
 
 
 def polyhedron_moments(vertices: FloatArray, faces: FaceArray, apex: FloatArray | None = None) -> FloatArray:
@@ -74,7 +74,7 @@ def polyhedron_moments(vertices: FloatArray, faces: FaceArray, apex: FloatArray 
     if len(faces) == 0:
         return np.zeros(10)
     corner = points.mean(axis=0) if apex is None else np.asarray(apex, dtype=np.float64)
-    sums: FloatArray = _tetrahedron_sums(points, np.ascontiguousarray(faces, dtype=np.int64), corner)
+    sums: FloatArray = _tetrahedron_sums(points, np.ascontiguousarray(faces, dtype=np.int64), corner).sum(axis=0)
     sums /= np.array([6, 24, 24, 24, 120, 120, 120, 120, 120, 120])
     return translated(sums, corner)
 

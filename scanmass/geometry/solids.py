@@ -38,7 +38,7 @@ def ellipsoid(a: float, b: float, c: float) -> FloatArray:
 
 
 def frustum(base: float, top: float, height: float) -> FloatArray:
-    """Cone frustum from radius ``base`` at z = 0 to ``top`` at ``height``: ``top`` 0 is a cone, both alike a cylinder."""
+    """Cone frustum from radius ``base`` at z = 0 to ``top`` at ``height``: ``top`` 0 is a cone."""
     a, b, h = base, top, height
     n = a * a + a * b + b * b
     v = np.pi * h * n / 3
