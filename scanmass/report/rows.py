@@ -1,0 +1,259 @@
+"""A result as rows of text, made once and printed many ways."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Iterator
+from dataclasses import dataclass, field
+from typing import Any, Literal, Protocol
+
+from scanmass.report import wording
+from scanmass.report.figures import EXACT, Ruler, System, share
+
+Document = dict[str, Any]
+Kind = Literal["lead", "result", "measured", "bracketed", "declared", "assumed", "declined", "warning", "caution"]
+
+
+class Understood(Protocol):
+    """A quantity of the pipeline file as it was understood."""
+
+    @property
+    def key(self) -> str: ...
+    @property
+    def text(self) -> str: ...
+
+
+@dataclass(frozen=True)
+class Row:
+    """One line: what, its value, its bounds, and a remark. Any but the first may be empty."""
+
+    label: str
+    value: str = ""
+    bounds: str = ""
+    remark: str = ""
+
+
+@dataclass(frozen=True)
+class Section:
+    """Rows that belong together; ``kind`` tells how sure a reader may be, ``note`` how to read them."""
+
+    title: str
+    kind: Kind
+    rows: tuple[Row, ...]
+    note: str = field(default="")
+
+
+@dataclass(frozen=True)
+class Rulers:
+    """The units one result is printed in."""
+
+    mass: Ruler
+    length: Ruler
+    volume: Ruler
+    area: Ruler
+    inertia: Ruler
+    density: Ruler
+
+    @classmethod
+    def of(cls, document: Document, name: System) -> Rulers:
+        """The units that suit the sizes in ``document``."""
+        moments = [p["moment_kg_m2"]["value"] for p in document["principal"]]
+        area = document["surface"]["area_m2"]
+        return cls(
+            Ruler.of("mass", document["mass_kg"]["value"], name),
+            Ruler.of("length", area**0.5, name),
+            Ruler.of("volume", document["volume_m3"]["value"], name),
+            Ruler.of("area", area, name),
+            Ruler.of("inertia", max(moments), name),
+            Ruler.of("density", document["density"]["mean_kg_m3"]["value"], name),
+        )
+
+
+def rows(document: Document, name: System = "metric", understood: Iterable[Understood] = ()) -> tuple[Section, ...]:
+    """The sections of a summary, in the order they are read; empty ones are left out.
+
+    Parameters
+    ----------
+    document
+        A valid ``result.json``.
+    name
+        "metric" (kg, mm) or "us" (lb, in).
+    understood
+        The quantities of the pipeline file, to be echoed.
+    """
+    use = Rulers.of(document, name)
+    sections = (
+        Section("Read this first", "lead", tuple(_lead(document))),
+        Section("Warnings", "warning", tuple(_notes(document["warnings"]))),
+        Section("Weight and volume", "result", tuple(_weight(document, use)), _level(document)),
+        Section("Centre of mass", "result", tuple(_centre(document, use)), "In the frame of the first scan."),
+        Section("Principal moments and axes", "result", tuple(_principal(document, use)), "About the centre of mass."),
+        Section("Inertia tensor", "result", tuple(_inertia(document, use)), _sign(document)),
+        Section("Measured: the scan", "measured", tuple(_scan(document, use))),
+        Section("Taken away before weighing", "measured", tuple(_removed(document))),
+        Section("Bracketed: what was not seen", "bracketed", tuple(_bracketed(document, use)), _BRACKET),
+        Section("Where the doubt comes from", "result", tuple(_budget(document, use)), _dominant(document)),
+        Section("Declared: quantities as understood", "declared", tuple(Row(q.key, q.text) for q in understood)),
+        Section("Assumed", "assumed", tuple(_notes(document["assumptions"]))),
+        Section("Declined: not claimed", "declined", tuple(_declined(document))),
+        Section("Before you lift", "caution", tuple(Row(text) for text in wording.CAUTIONS)),
+    )
+    return tuple(section for section in sections if section.rows)
+
+
+_BRACKET = "Least and greatest over the shapes it could have. Not random: no level attaches to it."
+
+
+def _level(document: Document) -> str:
+    return f"Bounds hold the true value {share(document['level'])} of the time, given what is assumed below."
+
+
+def _sign(document: Document) -> str:
+    return f"About the centre of mass, along the axes of the scan; {document['inertia_kg_m2']['sign']}."
+
+
+def _dominant(document: Document) -> str:
+    return " ".join(filter(None, (wording.dominant(document, of) for of in ("mass", "com"))))
+
+
+def _lead(document: Document) -> Iterator[Row]:
+    reason = wording.no_bound(document)
+    if reason is not None:
+        yield Row(f"no bound can be given: {reason}")
+    unseen = wording.bracket_leads(document)
+    if unseen is not None:
+        yield Row(unseen)
+    undetermined = sum(not p["determined"] for p in document["principal"])
+    if undetermined:
+        yield Row(f"{undetermined} of the 3 principal axes cannot be told from this scan; see there.")
+
+
+def _figure(label: str, figure: Document, ruler: Ruler, remark: str = "") -> Row:
+    words = ruler.words(figure["value"], figure["low"], figure["high"])
+    return Row(label, words.value, words.ends, remark)
+
+
+def _axes(label: str, figure: Document, ruler: Ruler, same: str = EXACT) -> Iterator[Row]:
+    for k, axis in enumerate("xyz"):
+        low, high = (None if figure[end] is None else figure[end][k] for end in ("low", "high"))
+        words = ruler.words(figure["value"][k], low, high, same)
+        yield Row(f"{label}{axis}", words.value, words.ends)
+
+
+def _weight(document: Document, use: Rulers) -> Iterator[Row]:
+    yield _figure("mass", document["mass_kg"], use.mass)
+    yield _figure("volume", document["volume_m3"], use.volume)
+    yield _figure("mean density", document["density"]["mean_kg_m3"], use.density)
+    parts = document["density"]["parts"]
+    for part in parts if len(parts) > 1 else ():
+        yield Row(f"of it {part['name']}", f"{use.mass.plain(part['mass_kg'])} {use.mass.unit}")
+
+
+def _centre(document: Document, use: Rulers) -> Iterator[Row]:
+    centre = document["center_of_mass_m"]
+    yield from _axes("", centre, use.length)
+    height = centre.get("height_above_base_m")
+    if height is not None:
+        yield _figure("height above the base", height, use.length)
+    for offset in centre.get("offsets", ()):
+        yield from _axes(f"from {offset['name']}: ", offset["offset_m"], use.length)
+    region = centre["region"]
+    if region is not None:
+        radii = use.length.stds(region["radii_m"], " x ")
+        remark = f"{share(region['level'])} region of the random and declared doubt, all three axes together"
+        yield Row("region, half-axes", radii, "", remark)
+
+
+def _principal(document: Document, use: Rulers) -> Iterator[Row]:
+    for label, principal in zip(("least", "middle", "greatest"), document["principal"], strict=True):
+        yield _figure(label, principal["moment_kg_m2"], use.inertia, wording.direction(principal))
+
+
+def _inertia(document: Document, use: Rulers) -> Iterator[Row]:
+    tensor = document["inertia_kg_m2"]
+    for i, j in ((0, 0), (1, 1), (2, 2), (0, 1), (1, 2), (0, 2)):
+        ends = {end: None if tensor[end] is None else tensor[end][i][j] for end in ("low", "high")}
+        yield _figure(f"I{'xyz'[i]}{'xyz'[j]}", {"value": tensor["value"][i][j], **ends}, use.inertia)
+
+
+def _scan(document: Document, use: Rulers) -> Iterator[Row]:
+    for scan in document["scans"]:
+        how = "declared" if scan["unit_from"] == "declared" else f"from the {scan['unit_from']}"
+        views = "1 view" if scan["views"] == 1 else f"{scan['views']} views"
+        used = f"{scan['points_used']} of {scan['points']} points used, {views}"
+        yield Row(scan["file"], f"read in {scan['unit']} ({how})", "", used)
+    surface = document["surface"]
+    shells = "1 shell" if surface["shells"] == 1 else f"{surface['shells']} shells"
+    made = "reconstructed from points" if surface["source"] == "points" else "the mesh of the scan itself"
+    detail = f"{made}: {surface['triangles']} triangles, {shells}; {wording.UNDERSIDES[surface['underside']]}"
+    yield Row("surface", f"{use.area.plain(surface['area_m2'])} {use.area.unit}", "", detail)
+    seen = surface["observed_fraction"]
+    yield Row("seen", f"{share(seen)} of the area", "", f"inferred, where no point lies near: {share(1 - seen)}")
+    yield Row("noise", remark=wording.noise(document, use.length))
+    difference = document["checks"]["routes_relative_difference"]
+    known = [d for d in difference.values() if d is not None]
+    if known:
+        yield Row(
+            "two routes", f"agree to {max(known):.1g}", "", "exact surface integrals against the cut cells, relative"
+        )
+
+
+def _removed(document: Document) -> Iterator[Row]:
+    for removed in document["removed"]:
+        if removed["points"]:
+            yield Row(removed["reason"], f"{removed['points']} points", share(removed["share"]))
+
+
+def _bracketed(document: Document, use: Rulers) -> Iterator[Row]:
+    for label, key, ruler in (("mass", "mass_kg", use.mass), ("volume", "volume_m3", use.volume)):
+        figure = document[key]
+        if figure["bracket"] is not None:
+            ends = ruler.words(figure["value"], figure["bracket"]["low"], figure["bracket"]["high"]).ends
+            yield Row(label, "", ends, _beside(figure, ruler))
+    centre = document["center_of_mass_m"]
+    if centre["bracket"] is not None:
+        yield from _axes(
+            "centre of mass ", {"value": centre["value"], **centre["bracket"]}, use.length, "the same for all"
+        )
+
+
+def _beside(figure: Document, ruler: Ruler) -> str:
+    random = figure["random"]
+    words = ruler.words(figure["value"], random["low"], random["high"])
+    return f"random and declared doubt alone: {words.ends}"
+
+
+def _budget(document: Document, use: Rulers) -> Iterator[Row]:
+    for row in document["budget"]:
+        if row["kind"] == "bracket":
+            mass, centre, word = row["mass_half_range_kg"], row["com_half_range_m"], "half range"
+        else:
+            mass, centre, word = row["mass_std_kg"], row["com_std_m"], "std"
+        each = centre if isinstance(centre, list) else [centre]
+        on_mass = "" if mass is None else f"{word} {use.mass.std(mass)}"
+        on_centre = "" if centre is None else f"centre {use.length.stds(each, ' / ')}"
+        yield Row(row["source"], on_mass, on_centre, _shares(row))
+
+
+def _shares(row: Document) -> str:
+    parts = [row["kind"]]
+    for key, what in (("share_mass", "mass"), ("share_com", "centre of mass")):
+        if row[key] is not None:
+            parts.append(f"{share(row[key])} of the doubt of the {what}")
+    return ", ".join(parts)
+
+
+def _notes(notes: list[Document]) -> Iterator[Row]:
+    for note in notes:
+        yield Row(note["text"], remark=f"[{note['code']}]")
+
+
+def _declined(document: Document) -> Iterator[Row]:
+    centre = document["center_of_mass_m"]
+    if document["frame"]["up"] is None:
+        yield Row(
+            "height above the base, rest and tilt: no up direction is declared (scan.up) and no support was found."
+        )
+    if centre["low"] is None or centre["high"] is None:
+        yield Row("bounds of the centre of mass: " + (wording.no_bound(document) or "nothing to go by."))
+    if any(not p["determined"] for p in document["principal"]):
+        yield Row("directions of the axes called undetermined.")

@@ -1,0 +1,112 @@
+"""The sentences a summary needs beside its numbers."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from scanmass.report.figures import Ruler, share
+
+Document = dict[str, Any]
+
+CAUTIONS = (
+    "The bounds are what the stated level says, not a worst case. For a lift, take the upper end of the mass and "
+    "add rigging, packing, base and any water held.",
+    "The bounds cover the doubts listed under 'Where the doubt comes from'. An error that is in every view of a scan "
+    "(its scale, its unit, a coating) shows only if it is declared, or if the object is weighed.",
+    "Hidden parts (a core, an armature, lead, a cavity, concrete fill) move mass and centre of mass and are "
+    "not seen by a scan of the outside.",
+    "scanmass does not judge whether the object or a pick point can bear the load.",
+    "Raise a hand's breadth first, look how it hangs, and set it down again if it tilts. Local codes and a "
+    "qualified person decide.",
+)
+
+UNDERSIDES = {
+    "seen": "the underside counts as scanned",
+    "flat": "the underside is declared flat, at the contact plane",
+    "hollow": "the underside is declared hollow",
+    "unknown": "the underside is not declared: what was not seen is bracketed",
+}
+
+
+def noise(document: Document, length: Ruler) -> str:
+    """What the bounds of the surface rest on, in a sentence."""
+    found = document["noise"]
+    size = "" if found["std_m"] is None else f" of {length.std(found['std_m'])} (one standard deviation)"
+    reach = "" if found["length_m"] is None else f", alike over {length.std(found['length_m'])}"
+    return {
+        "views": f"random, between views: noise{size}{reach}, from how {found['views']} views of the same places "
+        "differ. An error common to all views does not show in it.",
+        "declared": f"declared in the pipeline file: noise{size}{reach}.",
+        "upper_bound": f"an upper bound: noise{size}{reach}, from one cloud without views, so true shape "
+        "that is finer than the comparison surface counts as noise. A second scan, or the scanner's stated noise, "
+        "would settle it.",
+        "none": "nothing to go by: the scan does not show its own noise and none is declared.",
+    }[found["basis"]]
+
+
+def no_bound(document: Document) -> str | None:
+    """Why no bound of the mass can be given, or None where there is one."""
+    if document["mass_kg"]["low"] is not None and document["mass_kg"]["high"] is not None:
+        return None
+    for note in (*document["warnings"], *document["assumptions"]):
+        if note["code"] == "noise-unknown":
+            return str(note["text"])
+    return "the scan does not show its own noise and none is declared; declare scan.noise_std, or scan it again."
+
+
+def direction(principal: Document) -> str:
+    """What is known of one principal axis."""
+    if principal["determined"]:
+        axis = f"along {triple(principal['axis'])}"
+        if principal["cone_deg"] is None:
+            return f"{axis}; no bound on its direction"
+        return f"{axis}, true within {principal['cone_deg']:.2g} deg"
+    if principal["plane_normal"] is None:
+        return "axis undetermined: the moments are too close to tell, any direction will do"
+    return (
+        "axis undetermined: two moments are too close to tell; it lies anywhere in the plane square to "
+        f"{triple(principal['plane_normal'])}"
+    )
+
+
+def triple(vector: list[float]) -> str:
+    """A direction to four places.
+
+    >>> triple([0.0, -1e-9, 1.0])
+    '(0.0000, 0.0000, 1.0000)'
+    """
+    return "(" + ", ".join(f"{round(x, 4) + 0.0:.4f}" for x in vector) + ")"
+
+
+def dominant(document: Document, of: str) -> str | None:
+    """The source most of the random and declared doubt comes from; ``of`` is "mass" or "com"."""
+    rows = [row for row in document["budget"] if row[f"share_{of}"] is not None]
+    if not rows:
+        return None
+    most = max(rows, key=lambda row: float(row[f"share_{of}"]))
+    what = "mass" if of == "mass" else "centre of mass"
+    return f"Most of the random and declared doubt of the {what}: {most['source']} ({share(most[f'share_{of}'])})."
+
+
+def bracket_leads(document: Document) -> str | None:
+    """Says so where what was not seen is worth more than all random and declared doubt."""
+    led = []
+    for name, field in (("mass", "mass_kg"), ("centre of mass", "center_of_mass_m")):
+        if _wider(document[field]["bracket"], document[field]["random"]):
+            led.append(name)
+    if not led:
+        return None
+    return (
+        f"what was not seen is worth more than all other doubt of the {' and the '.join(led)}: scan it, or declare it."
+    )
+
+
+def _wider(bracket: Document | None, random: Document) -> bool:
+    if bracket is None or random["low"] is None or random["high"] is None:
+        return False
+    return _widest(bracket) > _widest(random)
+
+
+def _widest(ends: Document) -> float:
+    low, high = (side if isinstance(side, list) else [side] for side in (ends["low"], ends["high"]))
+    return max(float(b) - float(a) for a, b in zip(low, high, strict=True))

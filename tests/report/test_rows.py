@@ -1,0 +1,167 @@
+"""The summary says what is known, what is not, and why, in lines that fit."""
+
+from __future__ import annotations
+
+import io
+from typing import Any
+
+import pytest
+from rich.console import Console
+
+from scanmass.report import terminal
+from scanmass.report.figures import Ruler, share
+from scanmass.report.rows import Section, rows
+
+Document = dict[str, Any]
+
+
+def _sections(document: Document, *more: Any) -> dict[str, Section]:
+    return {section.title: section for section in rows(document, *more)}
+
+
+def _lines(section: Section) -> dict[str, tuple[str, str, str]]:
+    return {row.label: (row.value, row.bounds, row.remark) for row in section.rows}
+
+
+def _printed(document: Document, width: int = 80, terminal_is: bool = False) -> str:
+    out = io.StringIO()
+    console = Console(file=out, width=width, force_terminal=terminal_is, legacy_windows=False)
+    terminal.show(terminal.title(document), rows(document), console)
+    return out.getvalue()
+
+
+def test_kilograms_and_millimetres(document: Document) -> None:
+    sections = _sections(document)
+    weight = _lines(sections["Weight and volume"])
+    assert weight["mass"][:2] == ("7.00 kg", "6.50 to 7.50 kg")
+    assert weight["volume"][:2] == ("1.000 L", "0.980 to 1.020 L")
+    centre = _lines(sections["Centre of mass"])
+    assert centre["z"][:2] == ("49.7 mm", "48.2 to 51.2 mm")
+    assert centre["from near corner: x"][:2] == ("50.00 mm", "49.60 to 50.40 mm")
+    assert centre["height above the base"][0] == "49.7 mm"
+    assert centre["region, half-axes"][0] == "0.60 x 0.60 x 0.90 mm"
+
+
+def test_pounds_and_inches(document: Document) -> None:
+    sections = _sections(document, "us")
+    # 7 kg = 15.432 lb, 6.5 = 14.330, 7.5 = 16.535 (1 lb = 0.45359237 kg); the ends are rounded outward.
+    assert _lines(sections["Weight and volume"])["mass"][:2] == ("15.4 lb", "14.3 to 16.6 lb")
+    # 49.7 mm = 1.9567 in, 48.2 = 1.8976, 51.2 = 2.0157
+    assert _lines(sections["Centre of mass"])["z"][:2] == ("1.957 in", "1.897 to 2.016 in")
+
+
+def test_no_bound_leads_and_is_never_zero(document: Document) -> None:
+    document["noise"]["basis"] = "none"
+    for name in ("volume_m3", "mass_kg", "center_of_mass_m"):
+        document[name] |= {"std": None, "low": None, "high": None, "bracket": None}
+        document[name]["random"] = {"low": None, "high": None}
+    document["warnings"].append({"code": "noise-unknown", "text": "The mesh has 12 vertices and no declared noise."})
+    first = rows(document)[0]
+    assert first.title == "Read this first"
+    assert first.rows[0].label == "no bound can be given: The mesh has 12 vertices and no declared noise."
+    assert _lines(_sections(document)["Weight and volume"])["mass"][:2] == ("7 kg", "no bound")
+    assert "± 0" not in _printed(document)
+    assert "exact" not in _lines(_sections(document)["Centre of mass"])["x"][1]
+
+
+def test_what_was_not_seen_leads_when_it_is_larger(document: Document) -> None:
+    lead = [row.label for row in rows(document)[0].rows]
+    # The bracket of the centre spans 2 mm, its random part 1.2 mm; of the mass 0.2 kg against 0.8 kg.
+    assert lead[0].startswith("what was not seen is worth more than all other doubt of the centre of mass: scan it")
+    document["center_of_mass_m"]["bracket"]["low"][2] = 0.0496
+    assert not any("not seen" in row.label for row in rows(document)[0].rows)
+
+
+def test_axes_in_words(document: Document) -> None:
+    remarks = {row.label: row.remark for row in _sections(document)["Principal moments and axes"].rows}
+    assert remarks["least"] == "axis undetermined: the moments are too close to tell, any direction will do"
+    document["principal"][0] |= {"determined": True, "cone_deg": 3.21}
+    document["principal"][1] |= {"plane_normal": [1.0, 0.0, 0.0]}
+    remarks = {row.label: row.remark for row in _sections(document)["Principal moments and axes"].rows}
+    assert remarks["least"] == "along (1.0000, 0.0000, 0.0000), true within 3.2 deg"
+    assert remarks["middle"].endswith("anywhere in the plane square to (1.0000, 0.0000, 0.0000)")
+
+
+@pytest.mark.parametrize(
+    ("basis", "said"),
+    [
+        ("views", "random, between views"),
+        ("declared", "declared in the pipeline file"),
+        ("upper_bound", "an upper bound"),
+        ("none", "nothing to go by"),
+    ],
+)
+def test_the_basis_of_the_bounds_in_words(document: Document, basis: str, said: str) -> None:
+    document["noise"]["basis"] = basis
+    assert _lines(_sections(document)["Measured: the scan"])["noise"][2].startswith(said)
+
+
+def test_seen_assumed_bracketed_and_declined_stand_apart(document: Document) -> None:
+    document["frame"] |= {"up": None, "up_from": None}
+    kinds = {section.kind: section for section in rows(document)}
+    assert kinds["assumed"].rows[0].label == "Taken as solid above the rim."
+    assert kinds["assumed"].rows[0].remark == "[nothing-recessed-above-rim]"
+    assert kinds["bracketed"].rows[0].bounds == "6.90 to 7.10 kg"
+    assert kinds["declined"].rows[0].label.startswith("height above the base, rest and tilt: no up direction")
+    assert kinds["warning"].rows[0].remark == "[one-cloud]"
+    assert any("pick point can bear the load" in row.label for row in kinds["caution"].rows)
+
+
+def test_the_budget_names_its_greatest(document: Document) -> None:
+    budget = _sections(document)["Where the doubt comes from"]
+    assert "of the mass: density of grey cast iron (90 %)" in budget.note
+    assert "of the centre of mass: scan noise (100 %)" in budget.note
+    assert _lines(budget)["underside not seen"] == ("half range 0.30 kg", "centre 0 / 0 / 1.0 mm", "bracket")
+
+
+def test_quantities_are_echoed(document: Document) -> None:
+    class Quantity:
+        key = "scan.noise_std"
+        text = "0.1 mm"
+
+    declared = _sections(document, "metric", [Quantity()])["Declared: quantities as understood"]
+    assert _lines(declared)["scan.noise_std"][0] == "0.1 mm"
+
+
+def test_plain_and_within_the_width_when_piped(document: Document) -> None:
+    document["object"]["name"] = "a name " * 20
+    document["center_of_mass_m"]["offsets"][0]["name"] = "the tip of the left wing as seen from the visitor's side"
+    lines = _printed(document).splitlines()
+    assert all(len(line) <= 80 and line == line.rstrip() for line in lines)
+    assert "\x1b" not in _printed(document)
+    assert "\x1b[1" in _printed(document, terminal_is=True)
+
+
+@pytest.mark.parametrize(
+    ("value", "low", "high", "expected"),
+    [
+        (148.6372, 148.1, 149.16, ("148.64 kg", "148.10 to 149.16 kg")),
+        (1234.5, 667.4, 1801.6, ("1230 kg", "660 to 1810 kg")),  # two digits of 567 end at tens
+        (7.0, 7.0, 7.0, ("7 kg", "exact, as declared")),
+        (7.0, 7.0 - 1e-12, 7.0 + 1e-12, ("7 kg", "exact, as declared")),  # rounding, not doubt
+        (7.0, 6.99, 7.2, ("7.00 kg", "6.99 to 7.20 kg")),
+        (7.0, None, 7.2, ("7 kg", "no bound")),
+        (0.5, 0.0, 1.0, ("0.50 kg", "0.00 to 1.00 kg")),
+    ],
+)
+def test_value_and_ends_share_a_place(value: float, low: float, high: float, expected: tuple[str, str]) -> None:
+    words = Ruler.of("mass", 7.0, "metric").words(value, low, high)
+    assert (words.value, words.ends) == expected
+
+
+def test_ends_are_never_rounded_inward() -> None:
+    ruler = Ruler.of("length", 1.0, "us")
+    for value in (0.0123456, -3.3333333, 0.5, 12.7, -0.0001):
+        for half in (1e-5, 3.33e-4, 0.0999, 2.0):
+            low, high = ruler.words(value, value - half, value + half).ends.removesuffix(" in").split(" to ")
+            # The last of 13 digits of the division may go; a thousandth of the place shown is far more.
+            assert float(low) * 0.0254 <= value - half + 1e-9 * half
+            assert float(high) * 0.0254 >= value + half - 1e-9 * half
+
+
+def test_small_things_get_small_units() -> None:
+    assert Ruler.of("mass", 0.02, "metric").unit == "g"
+    assert Ruler.of("volume", 5e-6, "metric").unit == "cm3"
+    assert Ruler.of("inertia", 1e-5, "metric").unit == "kg mm2"
+    assert Ruler.of("length", 1e-3, "metric").unit == "mm"
+    assert share(0.999999) == "99.9999 %"
