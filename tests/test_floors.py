@@ -24,6 +24,7 @@ FLOORS = [
     {"report"},
     {"batch", "studies"},
     {"cli"},
+    {"__main__"},
 ]
 FLOOR_OF = {name: floor for floor, names in enumerate(FLOORS) for name in names}
 
