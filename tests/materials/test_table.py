@@ -10,6 +10,7 @@ import chemicals
 import numpy as np
 import periodictable
 import pytest
+from ruamel.yaml import YAML
 from scipy import stats
 
 from scanmass import seeds
@@ -52,6 +53,13 @@ def test_rows_are_found_by_all_their_names() -> None:
         for name in (row.name, *row.aliases, row.name.upper(), f" {row.name} "):
             assert find(name) is row
             assert row in search(name)
+
+
+def test_names_can_stand_in_a_pipeline_file() -> None:
+    yaml = YAML()
+    for row in materials():
+        for name in (row.name, *row.aliases):
+            assert yaml.load(f"{{material: {name}}}") == {"material": name}
 
 
 def test_castings_say_that_porosity_lowers_them() -> None:
