@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import sys
 from collections.abc import Callable
 from typing import Annotated
@@ -57,6 +58,9 @@ def scanmass(
 
 def main() -> None:
     """Run the command line."""
+    # A closed stream is None in Python, and would turn every print into a fault.
+    sys.stdout = sys.stdout or open(os.devnull, "w", encoding="utf-8")  # noqa: SIM115
+    sys.stderr = sys.stderr or open(os.devnull, "w", encoding="utf-8")  # noqa: SIM115
     for stream in (sys.stdout, sys.stderr):
         if hasattr(stream, "reconfigure"):
             stream.reconfigure(errors="replace", **({} if stream.isatty() else {"encoding": "utf-8"}))

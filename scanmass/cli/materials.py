@@ -10,7 +10,6 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from scanmass.cli.options import JsonOption, Units, UnitsOption
-from scanmass.errors import UserFault
 
 if TYPE_CHECKING:
     from scanmass.materials.table import Material
@@ -36,15 +35,17 @@ def materials(
     from scanmass.materials import table
 
     found = table.materials() if word is None else table.search(word)
-    if not found:
-        raise UserFault(f"no material matches '{word}'", allowed="'scanmass materials' lists them all")
+    if word is not None and not found:
+        found = (table.find(word),)  # its fault names the closest
     if as_json:
         print(json.dumps([asdict(material) for material in found], indent=1, ensure_ascii=False))
         return 0
     from scanmass.cli.streams import result_console
     from scanmass.report.terminal import show
 
-    show(f"{len(found)} materials", _sections(found, units), result_console())
+    marks = "; ".join(f"[{mark}] {meaning}" for mark, meaning in table.MARKS.items())
+    count = "1 material" if len(found) == 1 else f"{len(found)} materials"
+    show(f"{count}. {marks}.", _sections(found, units), result_console())
     return 0
 
 

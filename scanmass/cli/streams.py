@@ -5,7 +5,7 @@ from __future__ import annotations
 import os
 import sys
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from typing import TYPE_CHECKING
 
 from scanmass.progress import Progress, silent
@@ -27,7 +27,8 @@ def stdout_kept_clean() -> Iterator[None]:
         yield
         return
     try:
-        os.dup2(STDERR, STDOUT)
+        with suppress(OSError):  # stderr is closed
+            os.dup2(STDERR, STDOUT)
         yield
     finally:
         sys.stdout.flush()

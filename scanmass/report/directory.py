@@ -88,7 +88,10 @@ def _is_ours(path: Path) -> bool:
 def _write_files(result: MassResult, folder: Path, cells: bool) -> None:
     products = result.products
     _write_text(folder / "result.json", result.to_json())
-    _write_text(folder / "run.json", json.dumps(dict(result.run), indent=1, ensure_ascii=False, default=str) + "\n")
+    _write_text(
+        folder / "run.json",
+        json.dumps(dict(result.run), indent=1, ensure_ascii=False, allow_nan=False, default=str) + "\n",
+    )
     _write_text(folder / "pipeline.yaml", result.pipeline_text)
     write_surface(folder / "surface.ply", products.surface)
     write_removed(folder / "removed.ply", products.removed)

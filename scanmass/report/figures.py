@@ -12,6 +12,8 @@ System = Literal["metric", "us"]
 
 NO_BOUND = "no bound"
 EXACT = "exact, as declared"
+UNKNOWN_DOUBT = "no doubt found: no claim"
+"""For ends that do not differ although nobody declared so."""
 SMALLEST_SHARE = 1e-9
 """A half-width below this share of the quantity's own size is rounding of the arithmetic, not doubt."""
 
@@ -50,27 +52,28 @@ class Ruler:
     unit: str
     si: float
     size: float
+    same: str = EXACT
 
     @classmethod
-    def of(cls, dimension: str, size: float, name: System) -> Ruler:
-        """The ruler for quantities about as large as ``size``; lengths stay in mm or inches."""
+    def of(cls, dimension: str, size: float, name: System, same: str = EXACT) -> Ruler:
+        """The ruler for quantities about as large as ``size``; lengths stay in mm or inches.
+
+        ``same`` stands for ends that do not differ.
+        """
         unit = system(name)[dimension]
         si = float(unit_named(unit, (dimension,)).factor)
         if abs(size) < _FINER_BELOW.get(unit, 0.0) * si:
             unit = _FINER[unit]
             si = float(unit_named(unit, (dimension,)).factor)
-        return cls(unit, si, abs(size))
+        return cls(unit, si, abs(size), same)
 
-    def words(self, value: float, low: float | None, high: float | None, same: str = EXACT) -> Words:
-        """Value and ends, all to the second digit of the half-width, the ends rounded outward.
-
-        ``same`` stands for ends that do not differ.
-        """
+    def words(self, value: float, low: float | None, high: float | None) -> Words:
+        """Value and ends, all to the second digit of the half-width, the ends rounded outward."""
         if low is None or high is None:
             return Words(f"{self.plain(value)} {self.unit}", "", NO_BOUND)
         half = max(value - low, high - value)
         if half <= SMALLEST_SHARE * self.size:
-            return Words(f"{self.plain(value)} {self.unit}", "", same)
+            return Words(f"{self.plain(value)} {self.unit}", "", self.same)
         shown, width = rounded(_inside(value / self.si), half / self.si)
         place = Decimal(width).adjusted() - 1
         ends = f"{_outward(low / self.si, place, ROUND_FLOOR)} to {_outward(high / self.si, place, ROUND_CEILING)}"

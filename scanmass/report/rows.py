@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any, Literal, Protocol
 
 from scanmass.report import wording
-from scanmass.report.figures import EXACT, Ruler, System, share
+from scanmass.report.figures import EXACT, UNKNOWN_DOUBT, Ruler, System, share
 
 Document = dict[str, Any]
 Kind = Literal["lead", "result", "measured", "bracketed", "declared", "assumed", "declined", "warning", "caution"]
@@ -58,12 +58,14 @@ class Rulers:
         """The units that suit the sizes in ``document``."""
         moments = [p["moment_kg_m2"]["value"] for p in document["principal"]]
         area = document["surface"]["area_m2"]
+        noise = document["noise"]
+        same = EXACT if noise["basis"] == "declared" and noise["std_m"] == 0 else UNKNOWN_DOUBT
         return cls(
-            Ruler.of("mass", document["mass_kg"]["value"], name),
-            Ruler.of("length", area**0.5, name),
-            Ruler.of("volume", document["volume_m3"]["value"], name),
+            Ruler.of("mass", document["mass_kg"]["value"], name, same),
+            Ruler.of("length", area**0.5, name, same),
+            Ruler.of("volume", document["volume_m3"]["value"], name, same),
             Ruler.of("area", area, name),
-            Ruler.of("inertia", max(moments), name),
+            Ruler.of("inertia", max(moments), name, same),
             Ruler.of("density", document["density"]["mean_kg_m3"]["value"], name),
         )
 
@@ -132,10 +134,10 @@ def _figure(label: str, figure: Document, ruler: Ruler, remark: str = "") -> Row
     return Row(label, words.value, words.ends, remark)
 
 
-def _axes(label: str, figure: Document, ruler: Ruler, same: str = EXACT) -> Iterator[Row]:
+def _axes(label: str, figure: Document, ruler: Ruler) -> Iterator[Row]:
     for k, axis in enumerate("xyz"):
         low, high = (None if figure[end] is None else figure[end][k] for end in ("low", "high"))
-        words = ruler.words(figure["value"][k], low, high, same)
+        words = ruler.words(figure["value"][k], low, high)
         yield Row(f"{label}{axis}", words.value, words.ends)
 
 
@@ -212,7 +214,9 @@ def _bracketed(document: Document, use: Rulers) -> Iterator[Row]:
     centre = document["center_of_mass_m"]
     if centre["bracket"] is not None:
         yield from _axes(
-            "centre of mass ", {"value": centre["value"], **centre["bracket"]}, use.length, "the same for all"
+            "centre of mass ",
+            {"value": centre["value"], **centre["bracket"]},
+            replace(use.length, same="the same for all"),
         )
 
 

@@ -64,6 +64,14 @@ def test_no_bound_leads_and_is_never_zero(document: Document) -> None:
     assert "exact" not in _lines(_sections(document)["Centre of mass"])["x"][1]
 
 
+def test_no_difference_is_called_exact_only_where_declared(document: Document) -> None:
+    document["mass_kg"] |= {"low": 7.0, "high": 7.0}
+    said = [_lines(_sections(document)["Weight and volume"])["mass"][1]]
+    document["noise"] |= {"basis": "declared", "std_m": 0.0}
+    said.append(_lines(_sections(document)["Weight and volume"])["mass"][1])
+    assert said == ["no doubt found: no claim", "exact, as declared"]
+
+
 def test_what_was_not_seen_leads_when_it_is_larger(document: Document) -> None:
     lead = [row.label for row in rows(document)[0].rows]
     # The bracket of the centre spans 2 mm, its random part 1.2 mm; of the mass 0.2 kg against 0.8 kg.
