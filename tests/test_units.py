@@ -70,6 +70,12 @@ def test_table_is_closed_and_sourced() -> None:
     assert {unit.dimension for unit in units.UNITS.values()} == set(LIMITS)
 
 
+@pytest.mark.parametrize("dimension", sorted(LIMITS))
+def test_the_si_unit_comes_first(dimension: str) -> None:
+    first = units.allowed(dimension).split(", ")[0].replace("a bare number", "")
+    assert units.UNITS[first].factor == 1
+
+
 @pytest.mark.parametrize(
     ("name", "metres"),
     # 1959 agreement: 1 yd = 0.9144 m exactly, hence 1 ft = 0.3048 m and 1 in = 0.0254 m.
@@ -406,6 +412,10 @@ def test_rounded_refuses(value: float, half_width: float) -> None:
         (units.parse("148.6 ± 0.5 kg", "mass"), "lb", "327.6 ± 1.1 lb"),
         (units.parse("5.0 ± 0.8 mm", "length"), "mm", "5.0 ± 0.8 mm"),
         (units.parse("4 to 9 mm", "length"), "mm", "4 to 9 mm"),
+        (units.parse("4 to 9 mm", "length"), "in", "0.1574 to 0.3544 in"),
+        (units.parse("8450 to 8900 kg/m3", "density"), "lb/ft3", "527.5 to 555.7 lb/ft3"),
+        (units.parse("0.1003 to 0.2 in", "length"), "in", "0.1003 to 0.2 in"),
+        (units.parse("1e-5 to 3e-5", "ratio"), "", "1e-05 to 3e-05"),
         (units.parse("25.4 mm", "length"), "in", "1 in"),
         (units.parse("1 ± 0.0004", "ratio"), "", "1.0000 ± 0.0004"),
         (units.parse("95 %", "ratio"), "%", "95 %"),

@@ -38,6 +38,8 @@ SYSTEMS: Final = {
 NO_BOUND: Final = "(no bound)"
 _EVEN_SIDES: Final = 0.05
 """Sides that differ by less than this share of their mean are printed as one ±."""
+_LONG: Final = 7
+"""A declared number of more significant digits than this was made by a change of unit."""
 
 
 def system(name: Literal["metric", "us"]) -> dict[str, str]:
@@ -106,12 +108,21 @@ def show(figure: Figure, unit: str) -> str:
         return f"{_plain(value, 6)}{behind} {NO_BOUND}"
     low, high = _in(float(figure.low), unit), _in(float(figure.high), unit)
     if figure.spread == "uniform":
-        return f"{_plain(low)} to {_plain(high)}{behind}"
+        return f"{_range(low, high)}{behind}"
     if figure.spread == "normal" and figure.std is not None:
         return f"{_declared(value, _in(2 * float(figure.std), unit))}{behind}"
     if low == high:
         return f"{_plain(value)}{behind}"
     return f"{_bounded(value, low, high)}{behind}"
+
+
+def _range(low: float, high: float) -> str:
+    """The ends as they were given; where a change of unit made long numbers of them, rounded outward."""
+    ends = _plain(low), _plain(high)
+    if max(sum(character.isdigit() for character in end.lstrip("-0.")) for end in ends) > _LONG:
+        place, power = _place((high - low) / 2) - 1, _power(max(abs(low), abs(high)))
+        ends = _at(low, place, power, ROUND_FLOOR), _at(high, place, power, ROUND_CEILING)
+    return f"{ends[0]} to {ends[1]}"
 
 
 def _bounded(value: float, low: float, high: float) -> str:
