@@ -106,6 +106,8 @@ _BRACKET = "Least and greatest over the shapes it could have. Not random: no lev
 
 
 def _level(document: Document) -> str:
+    if wording.no_bound(document) is not None:
+        return "Best figures only: no bound is claimed, so nothing is known of how far off they are."
     return f"Bounds hold the true value {share(document['level'])} of the time, given what is assumed below."
 
 
