@@ -13,12 +13,13 @@ from scanmass.pipeline.file_echo import QuantityRow, effective_text, quantities,
 from scanmass.pipeline.file_faults import model_faults
 from scanmass.pipeline.file_yaml import LONGEST, Draft, Fault, read_mapping, read_yaml
 from scanmass.pipeline.models import Pipeline
+from scanmass.units import metres_per
 
-__all__ = ["QuantityRow", "effective_text", "load", "quantities", "sha256"]
+__all__ = ["QuantityRow", "effective_text", "load", "quantities", "sha256", "with_options"]
 
 
-def load(source: str | Path | Mapping[str, Any]) -> Pipeline:
-    """The settings of a pipeline file, or of a dict of the same shape.
+def load(source: str | Path | Mapping[str, Any] | Pipeline) -> Pipeline:
+    """The settings of a pipeline file, or of a dict of the same shape; a Pipeline is handed on as it is.
 
     Parameters
     ----------
@@ -39,10 +40,40 @@ def load(source: str | Path | Mapping[str, Any]) -> Pipeline:
     ...
     scanmass.errors.PipelineFault: pipeline: inside.body.density: ...
     """
+    if isinstance(source, Pipeline):
+        return source
     if isinstance(source, Mapping):
-        name, draft = "pipeline", read_mapping(source)
-    else:
-        name, draft = " ".join(str(source).split()), _read_file(source)
+        return _settings("pipeline", read_mapping(source))
+    return _settings(" ".join(str(source).split()), _read_file(source))
+
+
+def with_options(pipeline: Pipeline, *, unit: str | None = None, replicates: int | None = None) -> Pipeline:
+    """The settings with what was given beside the file, under the same rules; a unit must agree with the file's.
+
+    Raises
+    ------
+    PipelineFault
+        ``options: key: what was seen; what is allowed``.
+
+    >>> with_options(load({"inside": {"body": {"density": "1 g/cm3"}}}), unit="mm", replicates=500).bounds.replicates
+    500
+    """
+    blocks: Any = read_yaml(effective_text(pipeline)).tree
+    blocks["scan"]["unit"] = pipeline.scan.unit if unit is None else unit
+    blocks["bounds"]["replicates"] = pipeline.bounds.replicates if replicates is None else replicates
+    changed = _settings("options", read_mapping(blocks))
+    told, given = pipeline.scan.unit, changed.scan.unit
+    if told is not None and given is not None and metres_per(told) != metres_per(given):
+        fault = Fault(
+            ("scan", "unit"), f"'{given}' is given, and the file says '{told}'", "make them agree, or give one"
+        )
+        raise PipelineFault([fault.text("options")])
+    changed._assumptions = pipeline.assumptions
+    return changed
+
+
+def _settings(name: str, draft: Draft) -> Pipeline:
+    """The settings of a draft, or every fault of it under the file's ``name``."""
     notes: list[Note] = []
     faults = list(draft.faults)
     pipeline = None

@@ -268,9 +268,16 @@ class Pipeline(Block):
 
     @model_validator(mode="before")
     @classmethod
-    def _points_may_be_empty(cls, given: Any) -> Any:
-        if isinstance(given, Mapping) and given.get("points", {}) in (None, ""):
+    def _points_are_told_apart(cls, given: Any) -> Any:
+        if not isinstance(given, Mapping) or "points" not in given:
+            return given
+        points = given["points"]
+        if points is None or points == "":
             return {**given, "points": {}}
+        names = [str(name).strip() for name in points] if isinstance(points, Mapping) else []
+        twice = [name for k, name in enumerate(names) if name in names[:k]]
+        if twice:
+            raise refusal(f"two points are called '{twice[0]}'", "give each point a name of its own", "points")
         return given
 
     @property

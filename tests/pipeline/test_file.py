@@ -6,14 +6,19 @@ import pickle
 import subprocess
 import sys
 from pathlib import Path
+from typing import Annotated
 
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from pydantic import ValidationError
 
+from scanmass.doubt import Figure
+from scanmass.errors import Note
 from scanmass.materials import table
 from scanmass.pipeline.file import effective_text, load, quantities, sha256
+from scanmass.pipeline.models import Block
+from scanmass.pipeline.models_quantities import Quantity
 
 PIPELINES = sorted((Path(__file__).parents[2] / "pipelines").glob("*.yaml"))
 CONTRACT = """\
@@ -96,6 +101,17 @@ def test_the_fingerprint_is_of_the_settings_not_of_their_spelling() -> None:
     other = load({"scan": {"noise_std": "0.11 mm", "up": "0 0 1"}, "inside": {"body": {"density": "1250 ± 60 kg/m3"}}})
     assert one == same
     assert sha256(one) == sha256(same) != sha256(other)
+
+
+def test_what_was_assumed_in_reading_is_collected() -> None:
+    # No key of this version takes a mass, so a block of its own shows that notes come through.
+    class Weighing(Block):
+        mass: Annotated[Figure, Quantity("mass")]
+
+    notes: list[Note] = []
+    weighing = Weighing.model_validate({"mass": "9.80665 kN"}, context=notes)
+    assert weighing.mass.value == 1000.0  # standard gravity by definition
+    assert [note.code for note in notes] == ["force-as-mass"]
 
 
 def test_every_quantity_is_echoed_as_understood() -> None:

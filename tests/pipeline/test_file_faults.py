@@ -10,7 +10,7 @@ from hypothesis import example, given, settings
 from hypothesis import strategies as st
 
 from scanmass.errors import PipelineFault
-from scanmass.pipeline.file import load
+from scanmass.pipeline.file import load, with_options
 from scanmass.pipeline.file_yaml import LONGEST
 from scanmass.pipeline.models import Pipeline
 
@@ -78,6 +78,8 @@ VALUES = {
     "allowed: auto, or a length above 0 with its unit, such as 0.2 mm",
     "points: {lug: 1 2 3}": f"1: points.lug: '1 2 3': no unit is given; {LENGTHS}",
     "points: {lug: [1, 2, 3]}": "1: points.lug: a list; allowed: three numbers and a length unit, such as 120 0 300 mm",
+    'points: {lug: 1 2 3 mm,\n "lug ": 4 5 6 mm}': "1: points: two points are called 'lug'; "
+    "give each point a name of its own",
     "points: [lug]": "1: points: a list; write it as in points: {left wing tip: 120 0 300 mm}",
     "clean:\n  support: no": "2: clean.support: 'no', did you mean 'none'?; allowed: auto | none",
     "clean:\n  outliers: True": "2: clean.outliers: 'True', did you mean 'auto'?; allowed: auto | none",
@@ -226,6 +228,24 @@ def test_a_dict_has_keys_but_no_lines() -> None:
     endless["inside"] = endless
     with pytest.raises(PipelineFault, match="a Python dict"):
         load(endless)
+
+
+def test_options_beside_the_file_follow_its_rules() -> None:
+    pipeline = load({"scan": {"unit": "in"}, "bounds": {"level": "99.5 %"}, "inside": {"body": {"density": "1 g/cm3"}}})
+    assert with_options(pipeline) == pipeline
+    assert with_options(pipeline, unit="inch").scan.unit == "inch"  # the same unit by another name
+    for options, fault in (
+        ({"unit": "mm"}, "scan.unit: 'mm' is given, and the file says 'in'; make them agree, or give one"),
+        ({"unit": "mmm"}, f"scan.unit: 'mmm' is not a unit that is read here; did you mean mm? {LENGTHS}"),
+        ({"replicates": 7}, "bounds.replicates: '7'; allowed: a whole number from 200 to 100000"),
+        (
+            {"replicates": 300},
+            "bounds.replicates: 300 leave less than one beyond each bound at 99.5 %; at least 400, or a lower level",
+        ),
+    ):
+        with pytest.raises(PipelineFault) as caught:
+            with_options(pipeline, **options)
+        assert str(caught.value) == f"options: {fault}"
 
 
 PIECES = st.sampled_from(
