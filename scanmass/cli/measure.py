@@ -53,10 +53,10 @@ def measure(
       scanmass measure heron.ply --pipeline heron.yaml --unit mm --out heron-result
     """
     from scanmass.cli.streams import progress_bars, stdout_kept_clean
-    from scanmass.pipeline.file import load
+    from scanmass.pipeline.file import load, with_options
 
     with stdout_kept_clean():
-        settings = load(pipeline)
+        settings = with_options(load(pipeline), unit=unit, replicates=replicates)
         if out is not None:
             from scanmass.report.directory import refuse_foreign
 
