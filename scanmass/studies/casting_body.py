@@ -12,10 +12,10 @@ _PLATE = (0.300, 0.190, 0.022)
 _PLATE_CORNER, _PLATE_ROUNDING = 0.028, 0.005
 _INSIDE = 0.003
 """Height in the foot's metal at which what stands on it begins."""
-_BOSSES = tuple((x, y) for x in (-0.118, 0.118) for y in (-0.062, 0.062))
-_BARREL_RADIUS, _BARREL_TOP = 0.062, 0.165
+_BOSSES = tuple((x, y) for x in (-0.118, 0.118) for y in (-0.061, 0.061))
+_BARREL_RADIUS, HEIGHT = 0.062, 0.140
 _BORE = 0.036
-_SIDE_HEIGHT, _SIDE_REACH = 0.098, 0.112
+_SIDE_HEIGHT, _SIDE_REACH = 0.084, 0.096
 CORE_SHIFT = (0.0004, -0.0018, 0.0)
 """How far the as-cast barrel bore lies off the drawing, in m."""
 
@@ -30,14 +30,16 @@ def casting(core_shift: tuple[float, float, float] = (0.0, 0.0, 0.0), name: str 
     for x, y in _BOSSES:
         metal = metal + _foot_boss(m).translate((x, y, 0.0))
     holes = _recess(m) + _drill(m, _BORE, 0.30).translate((core_shift[0], core_shift[1], -0.05))
-    holes = holes + _drill(m, 0.046, 0.05).translate((core_shift[0], core_shift[1], _BARREL_TOP - 0.014))
-    holes = holes + _drill(m, 0.014, 0.20).rotate((0.0, 90.0, 0.0)).translate((0.0, 0.0, _SIDE_HEIGHT))
+    holes = holes + _drill(m, 0.046, 0.05).translate((core_shift[0], core_shift[1], HEIGHT - 0.014))
+    # The side boss has a blind bore, 22 mm deep.
+    side = _drill(m, 0.017, 0.10).rotate((0.0, 90.0, 0.0)).translate((_SIDE_REACH - 0.022, 0.0, _SIDE_HEIGHT))
+    holes = holes + side
     for x, y in _BOSSES:
         holes = holes + _drill(m, 0.0075, 0.10).translate((x, y, -0.03))
     for angle in np.radians(np.arange(6) * 60.0 + 30.0):
         # Six blind holes in the barrel's face.
-        place = (0.054 * float(np.cos(angle)), 0.054 * float(np.sin(angle)), _BARREL_TOP - 0.016)
-        holes = holes + _drill(m, 0.0036, 0.05, 24).translate(place)
+        place = (0.057 * float(np.cos(angle)), 0.057 * float(np.sin(angle)), HEIGHT - 0.008)
+        holes = holes + _drill(m, 0.0045, 0.05, 32).translate(place)
     return from_solid(name, metal - holes)
 
 
@@ -76,7 +78,7 @@ def _upper_rounding(radius: float, height: float) -> list[list[float]]:
 
 def _barrel(m: Any) -> Any:
     """The barrel with a fillet of 12 mm to the foot, a collar on top and a rounded lip."""
-    r, top, foot, fillet = _BARREL_RADIUS, _BARREL_TOP, _PLATE[2], 0.012
+    r, top, foot, fillet = _BARREL_RADIUS, HEIGHT, _PLATE[2], 0.012
     profile = [[0.0, _INSIDE], [r + fillet, _INSIDE], [r + fillet, foot - 1e-4]]
     profile += _arc((r + fillet, foot + fillet), fillet, 270.0, 180.0)
     profile += [[r, top - 0.030]]
@@ -98,9 +100,9 @@ def _foot_boss(m: Any) -> Any:
 
 def _side_boss(m: Any) -> Any:
     """A boss on the barrel's side along +x, conical by the mould's draft, with a flange at its end."""
-    profile = [[0.0, 0.0], [0.034, 0.0], [0.031, _SIDE_REACH - 0.018]]
-    profile += _arc((0.036, _SIDE_REACH - 0.018), 0.005, 180.0, 90.0, 8)[1:]
-    profile += [[0.040, _SIDE_REACH - 0.013], [0.040, _SIDE_REACH], [0.0, _SIDE_REACH]]
+    profile = [[0.0, 0.0], [0.029, 0.0], [0.027, _SIDE_REACH - 0.018]]
+    profile += _arc((0.031, _SIDE_REACH - 0.018), 0.004, 180.0, 90.0, 8)[1:]
+    profile += [[0.034, _SIDE_REACH - 0.014], [0.034, _SIDE_REACH], [0.0, _SIDE_REACH]]
     return _turned(m, profile, 96).rotate((0.0, 90.0, 0.0)).translate((0.0, 0.0, _SIDE_HEIGHT))
 
 
@@ -108,7 +110,7 @@ def _ribs(m: Any) -> Any:
     """Three ribs from the barrel down to the foot, 14 mm thick with a hollow curve, towards -x, +y and -y."""
     ribs = m.Manifold()
     for angle, reach in ((180.0, 0.140), (90.0, 0.088), (-90.0, 0.088)):
-        low, high, root = _PLATE[2] - 0.002, 0.128, _BARREL_RADIUS - 0.006
+        low, high, root = _PLATE[2] - 0.002, 0.108, _BARREL_RADIUS - 0.006
         run, rise = reach - root, high - low
         curve = [
             [reach - run * float(np.sin(t)), high - rise * float(np.cos(t))] for t in np.linspace(0, np.pi / 2, 25)

@@ -34,20 +34,21 @@ _ERRORS = SensorErrors(
 )
 _SCENARIO = (
     "A steel rotor of 400 mm: a shaft with two discs and a keyway, lying along x in two V-shaped rests. A hole was "
-    "drilled into the larger disc's face on purpose. Scanned in two set-ups of eight stations all round it, the rests "
+    "drilled into the larger disc's face on purpose. Scanned in two set-ups of twelve stations all round it, the rests "
     "moved along the shaft between them and cut away. The OBJ file is the rotor's exact mesh, in the same frame. "
     "Both files are in inches."
 )
 
 
 def _stations(first: float) -> list[Pose]:
-    """Eight places in a screw round the axis, swinging from end to end."""
+    """Twelve places in a screw round the axis: square to it, and from both ends at 35 and 50 degrees to it."""
     poses = []
-    for k in range(8):
-        turn, along = np.radians(first + 45.0 * k), (-0.45, 0.05, 0.40, -0.10)[k % 4]
-        middle = np.array([0.2, 0.0, 0.0]) + _PLACE
-        out = 0.68 * np.array([0.0, np.sin(turn), np.cos(turn)])
-        x, y, z = (float(np.round(part, 12)) for part in middle + out + [along, 0.0, 0.0])
+    middle = np.array([0.2, 0.0, 0.0]) + _PLACE
+    for k in range(12):
+        turn, from_axis = np.radians(first + 30.0 * k), np.radians((90.0, 35.0, 130.0, 90.0, 50.0, 145.0)[k % 6])
+        outward = np.array([0.0, np.sin(turn), np.cos(turn)])
+        step = 0.72 * (np.cos(from_axis) * np.array([1.0, 0.0, 0.0]) + np.sin(from_axis) * outward)
+        x, y, z = (float(np.round(part, 12)) for part in middle + step)
         sideways = (0.0, float(np.round(np.cos(turn), 12)), float(np.round(-np.sin(turn), 12)))
         poses.append(Pose((x, y, z), (float(middle[0]), float(middle[1]), float(middle[2])), sideways))
     return poses
@@ -61,12 +62,12 @@ def _rests(body: Body, places: tuple[float, float]) -> list[Body]:
 
 def _looks(body: Body, sensor: Sensor, progress: Progress) -> list[View]:
     views: list[View] = []
-    for first, places in ((0.0, (0.035, 0.370)), (22.5, (0.085, 0.305))):
+    for first, places in ((0.0, (0.035, 0.370)), (15.0, (0.085, 0.305))):
         scene = Scene(_rests(body, places))
         for pose in _stations(first):
             view = look(scene, sensor, pose, seed=105, index=len(views))
             views.append(view.keep(view.part == 0))
-            progress(NAME, len(views), 16)
+            progress(NAME, len(views), 24)
     return views
 
 
