@@ -36,8 +36,10 @@ def taken(block: Block, which: npt.NDArray[Any]) -> Block:
 def triple(column: Callable[[str], npt.NDArray[Any]], names: tuple[str, str, str], n: int) -> FloatArray:
     """Three columns of n numbers side by side, (n, 3) float64."""
     out = np.empty((n, 3))
-    for k, name in enumerate(names):
-        out[:, k] = column(name)
+    # A signalling NaN in single precision is still only a NaN.
+    with np.errstate(invalid="ignore"):
+        for k, name in enumerate(names):
+            out[:, k] = column(name)
     return out
 
 
@@ -45,8 +47,16 @@ def block_of(columns: Mapping[str, npt.NDArray[Any]], colour_top: float, view: i
     """A block from columns (n,) under the names of :mod:`.names`; colours run from 0 to ``colour_top``."""
     n = len(columns["x"])
     normals = triple(columns.__getitem__, NORMALS, n) if "nx" in columns else None
-    colours = eight_bit(triple(columns.__getitem__, COLOURS, n), colour_top) if "red" in columns else None
-    return Block(view, triple(columns.__getitem__, AXES, n), normals, colours)
+    return Block(view, triple(columns.__getitem__, AXES, n), normals, _colours(columns, colour_top))
+
+
+def _colours(columns: Mapping[str, npt.NDArray[Any]], top: float) -> npt.NDArray[np.uint8] | None:
+    if "red" not in columns:
+        return None
+    parts = [columns[name] for name in COLOURS]
+    if top == 255.0 and all(part.dtype == np.uint8 for part in parts):
+        return np.stack(parts, axis=1)
+    return eight_bit(triple(columns.__getitem__, COLOURS, len(parts[0])), top)
 
 
 def eight_bit(colours: FloatArray, top: float) -> npt.NDArray[np.uint8]:

@@ -12,6 +12,7 @@ import numpy.typing as npt
 
 from scanmass.errors import Note, ScanFault
 from scanmass.scans.blocks import BLOCK_POINTS, block_of
+from scanmass.scans.las_header import check_header
 from scanmass.scans.scan import Block, Scan, ViewHead
 from scanmass.scans.views import ViewTable
 
@@ -31,6 +32,7 @@ def read_las(path: Path) -> Scan:
     ScanFault
         If the header promises more than the file holds, or the points cannot be unpacked.
     """
+    check_header(path)
     with _opened(path) as reader:
         total = int(reader.header.point_count)
         _check_size(path, reader.header)

@@ -36,7 +36,7 @@ def read_stl(path: Path) -> Scan:
         corners = _binary(path, promised)
     elif head.lstrip().startswith(b"solid") and _is_text(path):
         corners = _ascii(path)
-    elif len(head) == HEAD and 0 < HEAD + promised * FACET.itemsize < size:
+    elif promised > 0 and HEAD + promised * FACET.itemsize < size:
         text = f"{path.name}: {size - HEAD - promised * FACET.itemsize} bytes after the last triangle were not read."
         corners, warnings = _binary(path, promised), (Note("bytes-unread", text),)
     else:

@@ -48,7 +48,7 @@ def layout_of(path: Path) -> Layout:
     else:
         raise ScanFault("the file holds no line of numbers", file=path, allowed="a line for each point: x y z")
     separator = _separator(line, path)
-    fields = len(line.split(separator))
+    fields = len(_fields(line, separator))
     columns, notes = head.named(fields)
     rows = _sample_rows(sample[offset:], fields, separator, path, line_number)
     if not columns:
@@ -89,11 +89,12 @@ class _Head:
         if line.startswith(COMMENTS):
             self.comment = line.lstrip(b"#/%! ")
             return True
-        words = re.split(rb"[\s,;]+", line)
+        words = re.split(rb"[\s,;]+", _QUOTED.sub(b"q", line))
         if len(words) == 1 and words[0].isdigit() and self.promised is None:
             self.promised = int(words[0])
             return True
-        if all(_is_number(word) for word in words if word):
+        numbers = sum(_is_number(word) for word in words)
+        if numbers >= 3 or numbers == len([word for word in words if word]):
             return False
         if words[0].lower() in (b"ncols", b"nrows"):
             raise ScanFault("the file is a terrain grid, not a list of points", file=self.path, allowed="x y z lines")
@@ -133,12 +134,19 @@ def _is_number(word: bytes) -> bool:
     return True
 
 
+def _fields(line: bytes, separator: bytes | None) -> list[bytes]:
+    """The fields of a line; a separator between quotation marks parts nothing."""
+    return _QUOTED.sub(b"q", line).split(separator)
+
+
+_QUOTED = re.compile(rb'"[^"]*"')
 _INNER_COMMA = re.compile(rb"^[+-]?\d*,\d+([eE][+-]?\d+)?,?$")
 
 
 def _separator(line: bytes, path: Path) -> bytes | None:
     """The mark between numbers of this line, None for blanks."""
     line = line.removeprefix(b"\xef\xbb\xbf")
+    line = _QUOTED.sub(b"q", line)
     words = re.split(rb"[\s;]+", line)
     if len(words) > 1 and any(_INNER_COMMA.match(word) for word in words):
         allowed = "write numbers with a decimal point: 1.5, not 1,5"
@@ -153,7 +161,7 @@ def _sample_rows(text: bytes, fields: int, separator: bytes | None, path: Path, 
     try:
         return parse_lines(text, Columns(fields, tuple(range(fields)), separator), path.name, first_line)
     except ScanFault:
-        rows = [line.split(separator) for line in text.splitlines()[:1000]]
+        rows = [_fields(line, separator) for line in text.splitlines()[:1000]]
         whole = [[float(w) if _is_number(w) else np.nan for w in row] for row in rows if len(row) == fields]
         return np.array(whole).reshape(-1, fields)
 
