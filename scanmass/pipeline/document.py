@@ -87,7 +87,7 @@ def surface_block(surface: Surface) -> dict[str, Any]:
     }
 
 
-def density_block(filled: DensityMap, mean: Figure) -> dict[str, Any]:
+def density_block(filled: DensityMap) -> dict[str, Any]:
     """Mean density, and each part with its own."""
     parts = []
     for part in filled.parts:
@@ -101,7 +101,8 @@ def density_block(filled: DensityMap, mean: Figure) -> dict[str, Any]:
                 "mass_kg": volume * float(part.density.value),
             }
         )
-    return {"mean_kg_m3": figure_block(mean), "parts": parts}
+    # One uniform body: its mean density is its density, doubt included.
+    return {"mean_kg_m3": figure_block(filled.parts[0].density), "parts": parts}
 
 
 def figure_block(figure: Figure) -> dict[str, Any]:
@@ -124,7 +125,7 @@ def checks_block(difference: RoutesDifference) -> dict[str, Any]:
 
 
 def moved_center(center: Mapping[str, Any], origin: FloatArray) -> dict[str, Any]:
-    """The block of the centre of mass with every place moved by ``origin`` (3,), from the working frame to the scan's."""
+    """The block of the centre of mass moved by ``origin`` (3,), from the working frame to the scan's."""
     moved = dict(center)
     for key in ("value", "low", "high"):
         moved[key] = _moved(moved[key], origin)

@@ -1,0 +1,69 @@
+"""All the blocks of the document put together."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Any
+
+import numpy as np
+
+from scanmass.density.fill import DensityMap
+from scanmass.errors import Note
+from scanmass.mass.routes import RoutesDifference
+from scanmass.pipeline import document
+from scanmass.pipeline.models import Pipeline
+from scanmass.pipeline.places import height, offsets
+from scanmass.pipeline.shape import Shape
+from scanmass.scans.scan import Scan
+from scanmass.uncertainty.bounds import Bounds
+from scanmass.uncertainty.document import as_document
+
+
+def assemble(
+    scans: Sequence[Scan],
+    settings: Pipeline,
+    seed: int,
+    shape: Shape,
+    filled: DensityMap,
+    difference: RoutesDifference,
+    bounds: Bounds,
+    notes: tuple[Note, ...],
+) -> dict[str, Any]:
+    """``result.json`` as a dict, in the contract's order."""
+    found = as_document(bounds)
+    points = {name: np.array(place) - shape.origin for name, place in settings.points.items()}
+    center = document.moved_center(found["center_of_mass_m"], shape.origin)
+    center["offsets"] = offsets(bounds, points)
+    center["height_above_base_m"] = None
+    if shape.up is not None and shape.base_height is not None:
+        center["height_above_base_m"] = height(bounds, shape.surface.closures, shape.up, shape.base_height)
+    total = sum(scan.total for scan in scans)
+    said = [n for scan in scans for n in scan.assumptions]
+    warned = [n for scan in scans for n in scan.warnings]
+    return {
+        "schema": document.SCHEMA,
+        "scanmass": document.origin_block(settings, seed),
+        "object": {"name": settings.object.name, "id": settings.object.id},
+        "level": bounds.level,
+        "frame": {
+            "of": "first scan",
+            "up": None if shape.up is None else shape.up.tolist(),
+            "up_from": shape.up_from,
+        },
+        "scans": document.scan_rows(scans, shape.cloud),
+        "removed": document.removed_rows(shape.removed, total),
+        "surface": document.surface_block(shape.surface),
+        "noise": found["noise"],
+        "volume_m3": found["volume_m3"],
+        "mass_kg": found["mass_kg"],
+        "center_of_mass_m": center,
+        "inertia_kg_m2": found["inertia_kg_m2"],
+        "principal": found["principal"],
+        "density": document.density_block(filled),
+        "checks": document.checks_block(difference),
+        "budget": found["budget"],
+        "assumptions": document.note_rows(
+            [*settings.assumptions, *said, *shape.assumptions, *notes, *bounds.assumptions]
+        ),
+        "warnings": document.note_rows([*warned, *shape.warnings, *bounds.warnings]),
+    }

@@ -1,0 +1,205 @@
+"""From scans to the closed surface that is weighed: the stages in order, with the settings each takes."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+import numpy.typing as npt
+from scipy.spatial import cKDTree
+
+from scanmass.cloud.cloud import Cloud, Removed
+from scanmass.cloud.orient import orient
+from scanmass.cloud.outliers import outliers
+from scanmass.cloud.separate import Separated, separate
+from scanmass.cloud.thin import Thinned, thin
+from scanmass.errors import Declined, Note
+from scanmass.geometry.moments import scaled, translated
+from scanmass.pipeline.models import Pipeline
+from scanmass.progress import Progress
+from scanmass.scans.scan import Scan
+from scanmass.surface.from_cloud import surface_from_cloud
+from scanmass.surface.from_mesh import from_mesh
+from scanmass.surface.mesh import FaceArray
+from scanmass.surface.reconstruct import reconstruct
+from scanmass.surface.refine import vertex_normals
+from scanmass.surface.surface import Closure, Surface
+
+FloatArray = npt.NDArray[np.float64]
+
+_FEW_SAMPLES = 100_000
+"""An object left with fewer samples than this by a thinned scan of much else is thinned again by itself."""
+_COARSE_CELLS = 16
+"""Cells along the longest side of the coarse surface that bounds unknown noise from above (design 5.12)."""
+
+
+@dataclass(frozen=True)
+class Shape:
+    """A closed surface and what led to it, in metres in the working frame: the scan's frame less ``origin`` (3,).
+
+    ``cloud``: the samples the surface was fitted to, None for a mesh; ``up`` (3,) unit or None;
+    ``base_height``: ``up . r`` of the plane the object stands on, None without up;
+    """
+
+    surface: Surface
+    cloud: Cloud | None
+    removed: Removed
+    origin: FloatArray
+    up: FloatArray | None
+    up_from: str | None
+    base_height: float | None
+    assumptions: tuple[Note, ...]
+    warnings: tuple[Note, ...]
+
+
+def shape_of(scans: Sequence[Scan], settings: Pipeline, seed: int, progress: Progress) -> Shape:
+    """The surface of one object: of its mesh if the scan is one, else of the points of all scans together."""
+    if len(scans) == 1 and scans[0].faces is not None:
+        return _of_mesh(scans[0], scans[0].faces, settings, progress)
+    return _of_points(scans, settings, seed, progress)
+
+
+def _of_mesh(scan: Scan, faces: FaceArray, settings: Pipeline, progress: Progress) -> Shape:
+    vertices = scan.points()
+    origin = 0.5 * (vertices.min(axis=0) + vertices.max(axis=0))
+    up = None if settings.scan.up is None else np.array(settings.scan.up)
+    surface = from_mesh(
+        vertices - origin,
+        faces,
+        underside=settings.surface.underside_kind,
+        hollow_depth=settings.surface.hollow_depth,
+        up=up,
+        progress=progress,
+    )
+    return _finished(surface, None, Removed.nothing(), origin, up, None, settings, (), ())
+
+
+def _of_points(scans: Sequence[Scan], settings: Pipeline, seed: int, progress: Progress) -> Shape:
+    declared = None if settings.scan.up is None else np.array(settings.scan.up)
+    thinned = thin(scans, progress=progress)
+    origin = 0.5 * (thinned.cloud.points.min(axis=0) + thinned.cloud.points.max(axis=0))
+    found = separate(
+        _moved(thinned.cloud, -origin),
+        support=settings.clean.support,
+        up=declared,
+        seed=seed,
+        progress=progress,
+    )
+    cloud = _finer(scans, thinned, found, origin, progress)
+    removed, notes = found.removed, thinned.warnings + found.warnings
+    if settings.clean.outliers == "auto":
+        cloud, strays, said = outliers(cloud)
+        removed, notes = removed.joined(strays), notes + said
+    oriented = orient(cloud, progress=progress)
+    resolution = settings.surface.resolution
+    surface = surface_from_cloud(
+        oriented.cloud,
+        resolution=None if isinstance(resolution, str) else resolution,
+        underside=settings.surface.underside_kind,
+        hollow_depth=settings.surface.hollow_depth,
+        up=found.up,
+        contact_height=found.contact_height,
+        progress=progress,
+    )
+    return _finished(
+        surface,
+        oriented.cloud,
+        removed,
+        origin,
+        found.up,
+        found.contact_height,
+        settings,
+        found.assumptions + oriented.assumptions,
+        notes + oriented.warnings,
+    )
+
+
+def _finer(scans: Sequence[Scan], thinned: Thinned, found: Separated, origin: FloatArray, progress: Progress) -> Cloud:
+    """The object's own samples, thinned again where the first thinning was spent on what lies around it."""
+    coarse = found.cloud
+    if thinned.cell is None or len(coarse.points) >= _FEW_SAMPLES:
+        return coarse
+    margin = 2.0 * thinned.cell
+    box = (coarse.points.min(axis=0) + origin - margin, coarse.points.max(axis=0) + origin + margin)
+    again = _moved(thin(scans, within=box, progress=progress).cloud, -origin)
+    distance, _ = cKDTree(coarse.points).query(again.points, distance_upper_bound=margin)
+    return again.keep(np.isfinite(distance))
+
+
+def _moved(cloud: Cloud, shift: FloatArray) -> Cloud:
+    return replace(cloud, points=cloud.points + shift, scanners=cloud.scanners + shift)
+
+
+def _finished(
+    surface: Surface,
+    cloud: Cloud | None,
+    removed: Removed,
+    origin: FloatArray,
+    up: FloatArray | None,
+    contact: float | None,
+    settings: Pipeline,
+    assumptions: tuple[Note, ...],
+    warnings: tuple[Note, ...],
+) -> Shape:
+    """The shape with the declared scale applied about the object's own centre."""
+    up_from = None if up is None else "declared" if settings.scan.up is not None else "support"
+    if up is not None and contact is None:
+        contact = float((surface.vertices @ up).min())
+    scale = 1.0 if settings.scan.scale is None else float(settings.scan.scale.value)
+    if scale != 1.0:
+        middle = surface.vertices.mean(axis=0)
+        surface = _scaled(surface, scale, middle)
+        cloud = None if cloud is None else replace(cloud, points=middle + scale * (cloud.points - middle))
+        if up is not None and contact is not None:
+            contact = float(up @ middle + scale * (contact - up @ middle))
+    return Shape(
+        surface,
+        cloud,
+        removed,
+        origin,
+        up,
+        up_from,
+        contact,
+        assumptions + surface.assumptions,
+        warnings + surface.warnings,
+    )
+
+
+def _scaled(surface: Surface, factor: float, middle: FloatArray) -> Surface:
+    def grown(moments: FloatArray) -> FloatArray:
+        return translated(scaled(translated(moments, -middle), factor), middle)
+
+    coarse = surface.coarse_moments
+    return replace(
+        surface,
+        vertices=middle + factor * (surface.vertices - middle),
+        resolution=factor * surface.resolution,
+        closures=tuple(Closure(c.name, grown(c.moments)) for c in surface.closures),
+        coarse_moments=None if coarse is None else grown(coarse),
+    )
+
+
+def coarse_surface(shape: Shape) -> tuple[FloatArray, FaceArray] | None:
+    """Vertices and faces of a surface that follows the object but not its noise; None where none can be made."""
+    surface = shape.surface
+    cloud = shape.cloud
+    if cloud is None:
+        n = len(surface.vertices)
+        normals = vertex_normals(surface.vertices, surface.faces)
+        ones = np.ones(n, np.int32)
+        cloud = Cloud(
+            surface.vertices,
+            np.zeros(n, np.int32),
+            ones,
+            ("mesh",),
+            np.full((1, 3), np.nan),
+            surface.resolution,
+            normals,
+        )
+    size = float(np.ptp(surface.vertices, axis=0).max())
+    try:
+        mesh = reconstruct(cloud, resolution=size / _COARSE_CELLS)
+    except Declined:
+        return None
+    return mesh.vertices, mesh.faces
