@@ -37,7 +37,7 @@ def measure(
     workers: Annotated[
         int,
         typer.Option(
-            "--workers", metavar="N", min=1, help="Processes to share the work; the result does not depend on it."
+            "--workers", metavar="N", min=1, help="Threads to share the work; the result does not depend on it."
         ),
     ] = 1,
     units: UnitsOption = Units.metric,

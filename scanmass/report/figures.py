@@ -17,6 +17,8 @@ UNKNOWN_DOUBT = "no doubt found: no claim"
 SMALLEST_SHARE = 1e-9
 """A half-width below this share of the quantity's own size is rounding of the arithmetic, not doubt."""
 
+LEAST_SHARE = 1e-5
+
 _FINER = {
     "kg": "g",
     "L": "cm3",
@@ -119,9 +121,13 @@ def number(value: float, digits: int = 6) -> str:
 def share(part: float) -> str:
     """A share as per cent; little is never called nothing, nor nearly all all.
 
-    >>> share(0.0), share(0.00041), share(0.123), share(0.9999), share(1.0)
-    ('0 %', '0.041 %', '12 %', '99.99 %', '100 %')
+    >>> share(0.0), share(1e-9), share(0.00041), share(0.123), share(0.9999), share(1.0)
+    ('0 %', 'under 0.001 %', '0.041 %', '12 %', '99.99 %', '100 %')
     """
+    if 0 < part < LEAST_SHARE:
+        return f"under {100 * LEAST_SHARE:g} %"
+    if 1 - LEAST_SHARE < part < 1:
+        return f"over {100 - 100 * LEAST_SHARE:g} %"
     per_cent = 100 * part
     if per_cent > 99 and part < 1:
         return f"{100 - float(f'{100 - per_cent:.1g}'):g} %"

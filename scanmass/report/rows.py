@@ -188,10 +188,13 @@ def _scan(document: Document, use: Rulers) -> Iterator[Row]:
     surface = document["surface"]
     shells = "1 shell" if surface["shells"] == 1 else f"{surface['shells']} shells"
     made = "reconstructed from points" if surface["source"] == "points" else "the mesh of the scan itself"
-    detail = f"{made}: {surface['triangles']} triangles, {shells}; {wording.UNDERSIDES[surface['underside']]}"
+    detail = f"{made}: {surface['triangles']} triangles, {shells}; {wording.underside(document)}"
     yield Row("surface", f"{use.area.plain(surface['area_m2'])} {use.area.unit}", "", detail)
     seen = surface["observed_fraction"]
     yield Row("seen", f"{share(seen)} of the area", "", f"inferred, where no point lies near: {share(1 - seen)}")
+    if document["frame"]["up"] is not None:
+        found = {"declared": "declared", "support": "square to the support that was found"}
+        yield Row("up", wording.triple(document["frame"]["up"]), "", found[document["frame"]["up_from"]])
     yield Row("noise", remark=wording.noise(document, use.length))
     difference = document["checks"]["routes_relative_difference"]
     known = [d for d in difference.values() if d is not None]

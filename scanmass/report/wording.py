@@ -20,12 +20,20 @@ CAUTIONS = (
     "qualified person decide.",
 )
 
-UNDERSIDES = {
+_UNDERSIDES = {
     "seen": "the underside counts as scanned",
     "flat": "the underside is declared flat, at the contact plane",
     "hollow": "the underside is declared hollow",
     "unknown": "the underside is not declared: what was not seen is bracketed",
 }
+
+
+def underside(document: Document) -> str:
+    """What the lower side counts as."""
+    kind = document["surface"]["underside"]
+    if kind == "unknown" and document["mass_kg"]["bracket"] is None:
+        return "the underside is not declared; no part is bracketed"
+    return _UNDERSIDES[kind]
 
 
 def noise(document: Document, length: Ruler) -> str:

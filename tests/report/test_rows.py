@@ -172,4 +172,6 @@ def test_small_things_get_small_units() -> None:
     assert Ruler.of("volume", 5e-6, "metric").unit == "cm3"
     assert Ruler.of("inertia", 1e-5, "metric").unit == "kg mm2"
     assert Ruler.of("length", 1e-3, "metric").unit == "mm"
-    assert share(0.999999) == "99.9999 %"
+    assert share(0.9999) == "99.99 %"
+    assert share(0.999999) == "over 99.999 %"
+    assert share(2e-96) == "under 0.001 %"
