@@ -38,7 +38,7 @@ def admit(scans: Sequence[Scan], surveys: Sequence[Survey], metres_per_unit: Seq
         _check_size(scan, seen, metres)
     _check_flat(counted, surveys)
     return tuple(
-        replace(scan, warnings=scan.warnings + _coarse(scan, seen, metres) + _loose(scan))
+        replace(scan, warnings=scan.warnings + _coarse(scan, seen, metres) + _at_origin(scan, seen) + _loose(scan))
         for scan, seen, metres in zip(counted, surveys, metres_per_unit, strict=True)
     )
 
@@ -127,6 +127,14 @@ def _coarse(scan: Scan, seen: Survey, metres: float) -> tuple[Note, ...]:
         f"{length(seen.step * metres)}; export them nearer to the origin or in double precision."
     )
     return (Note("coordinates-rounded", text),)
+
+
+def _at_origin(scan: Scan, seen: Survey) -> tuple[Note, ...]:
+    """A warning where points lie on one another at the origin, as they do when what was not measured is written."""
+    if seen.at_origin < 2:
+        return ()
+    text = f"{scan.file}: {seen.at_origin} points lie exactly at 0, 0, 0; they may stand for what was not measured."
+    return (Note("points-at-origin", text),)
 
 
 def _loose(scan: Scan) -> tuple[Note, ...]:

@@ -59,6 +59,12 @@ def _colours(columns: Mapping[str, npt.NDArray[Any]], top: float) -> npt.NDArray
     return eight_bit(triple(columns.__getitem__, COLOURS, len(parts[0])), top)
 
 
+def at_zero(points: FloatArray) -> npt.NDArray[np.bool_]:
+    """Which points (n, 3) lie exactly at the origin: where a scanner writes a point it did not measure."""
+    mask: npt.NDArray[np.bool_] = (points[:, 0] == 0) & (points[:, 1] == 0) & (points[:, 2] == 0)
+    return mask
+
+
 def eight_bit(colours: FloatArray, top: float) -> npt.NDArray[np.uint8]:
     """Colours (n, 3) of 0 to ``top`` as 0 to 255; what is not finite becomes 0.
 

@@ -12,11 +12,12 @@ import numpy as np
 import numpy.typing as npt
 
 from scanmass.errors import Note, ScanFault
-from scanmass.scans.blocks import BLOCK_POINTS, eight_bit, triple
+from scanmass.scans.blocks import BLOCK_POINTS, at_zero, eight_bit, triple
 from scanmass.scans.names import AXES
+from scanmass.scans.rotation import rotation_from_quaternion
 from scanmass.scans.scan import Block, FloatArray, Scan, ViewHead
+from scanmass.scans.wording import CUT
 
-_CUT = "the file is cut or corrupt: copy or export it again"
 CARTESIAN = ("cartesianX", "cartesianY", "cartesianZ")
 SPHERICAL = ("sphericalRange", "sphericalAzimuth", "sphericalElevation")
 COLOURS = ("colorRed", "colorGreen", "colorBlue")
@@ -27,9 +28,9 @@ INVALID = ("cartesianInvalidState", "sphericalInvalidState")
 def read_e57(path: Path) -> Scan:
     """All scans of an E57 file, each one a view with its pose applied.
 
-    Points marked invalid come as NaN: they are places without a return. A scanner stands at the origin of its own
-    scan, so its place is the pose's translation, unless there is neither a pose that moves anything nor a range
-    grid: then the points may have been merged from several places.
+    Points marked invalid, and points at no distance from a scanner, come as NaN: there was no return. A scanner
+    stands at the origin of its own scan, so its place is the pose's translation, unless there is neither a pose
+    that moves anything nor a range grid: then the points may have been merged from several places.
 
     Raises
     ------
@@ -80,7 +81,7 @@ def _opened(path: Path) -> Iterator[Any]:
         file = libe57.ImageFile(str(path), "r")
         yield file
     except (libe57.E57Exception, RuntimeError, ValueError, MemoryError) as error:
-        raise ScanFault(f"the file cannot be read ({_first_line(error)})", file=path, allowed=_CUT) from None
+        raise ScanFault(f"the file cannot be read ({_first_line(error)})", file=path, allowed=CUT) from None
     finally:
         if file is not None:
             file.close()
@@ -148,20 +149,13 @@ def _pose(node: Any, index: int, path: Path) -> tuple[FloatArray, FloatArray, tu
     shift = np.array([_number(node, f"pose/translation/{c}", 0.0) for c in AXES])
     length = float(np.linalg.norm(turn))
     if not (np.isfinite(turn).all() and np.isfinite(shift).all() and length > 0):
-        raise ScanFault(f"the pose of scan {index} is no rotation and translation", file=path, allowed=_CUT)
+        raise ScanFault(f"the pose of scan {index} is no rotation and translation", file=path, allowed=CUT)
     warnings: tuple[Note, ...] = ()
     if abs(length - 1) > 1e-4:
         text = f"{path.name}: the pose of scan {index} has a rotation of length {length:.6g} where 1 is right."
         warnings = (Note("pose-not-unit", text),)
-    w, x, y, z = turn / length
-    rotation = np.array(
-        [
-            [1 - 2 * (y * y + z * z), 2 * (x * y - z * w), 2 * (x * z + y * w)],
-            [2 * (x * y + z * w), 1 - 2 * (x * x + z * z), 2 * (y * z - x * w)],
-            [2 * (x * z - y * w), 2 * (y * z + x * w), 1 - 2 * (x * x + y * y)],
-        ]
-    )
-    return rotation, shift, warnings
+    w, x, y, z = (float(part) for part in turn / length)
+    return rotation_from_quaternion(w, x, y, z), shift, warnings
 
 
 def _blocks(path: Path, scans: list[_Described]) -> Iterator[Block]:
@@ -189,7 +183,7 @@ def _columns(file: Any, scan: _Described, path: Path) -> Iterator[dict[str, Floa
     finally:
         reader.close()
     if left:
-        raise ScanFault(f"{left} points of scan {scan.index} are missing", file=path, allowed=_CUT)
+        raise ScanFault(f"{left} points of scan {scan.index} are missing", file=path, allowed=CUT)
 
 
 def _block(scan: _Described, columns: dict[str, FloatArray]) -> Block:
@@ -201,6 +195,8 @@ def _block(scan: _Described, columns: dict[str, FloatArray]) -> Block:
     for name in INVALID:
         if name in columns:
             points[columns[name] != 0] = np.nan
+    if scan.head.scanner is not None:
+        points[at_zero(own)] = np.nan
     colours = None
     if "colorRed" in columns:
         span = np.maximum(scan.colour_top - scan.colour_low, 1e-12)

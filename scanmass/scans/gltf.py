@@ -16,6 +16,7 @@ from scanmass.scans.blocks import eight_bit
 from scanmass.scans.gltf_document import Document, open_document
 from scanmass.scans.memory import mesh_scan
 from scanmass.scans.polygons import check_range
+from scanmass.scans.rotation import rotation_from_quaternion
 from scanmass.scans.scan import Scan
 
 FloatArray = npt.NDArray[np.float64]
@@ -120,12 +121,7 @@ def _matrix(node: dict[str, Any]) -> FloatArray:
         return np.array(node["matrix"], np.float64).reshape(4, 4).T
     x, y, z, w = (float(c) for c in node.get("rotation", (0, 0, 0, 1)))
     matrix = np.eye(4)
-    matrix[:3, :3] = [
-        [1 - 2 * (y * y + z * z), 2 * (x * y - z * w), 2 * (x * z + y * w)],
-        [2 * (x * y + z * w), 1 - 2 * (x * x + z * z), 2 * (y * z - x * w)],
-        [2 * (x * z - y * w), 2 * (y * z + x * w), 1 - 2 * (x * x + y * y)],
-    ]
-    matrix[:3, :3] *= np.array(node.get("scale", (1, 1, 1)), np.float64)
+    matrix[:3, :3] = rotation_from_quaternion(w, x, y, z) * np.array(node.get("scale", (1, 1, 1)), np.float64)
     matrix[:3, 3] = node.get("translation", (0, 0, 0))
     return matrix
 

@@ -15,12 +15,12 @@ import numpy as np
 import numpy.typing as npt
 
 from scanmass.errors import ScanFault
+from scanmass.scans.wording import CUT
 
 COMPONENTS = {5120: "i1", 5121: "u1", 5122: "i2", 5123: "u2", 5125: "u4", 5126: "f4"}
 WIDTHS = {"SCALAR": 1, "VEC2": 2, "VEC3": 3, "VEC4": 4}
 FINE = {"KHR_mesh_quantization", "KHR_texture_transform", "KHR_materials_unlit"}
 """Required extensions that change nothing here, or are read."""
-_CUT = "the file is cut or corrupt: copy or export it again"
 
 
 @dataclass(frozen=True)
@@ -36,7 +36,7 @@ class Document:
         """Entry ``index`` of the list ``kind`` of the description."""
         entries = self.tree.get(kind, [])
         if not isinstance(index, int) or not 0 <= index < len(entries) or not isinstance(entries[index], dict):
-            raise ScanFault(f"the description names entry {index!r} of its {kind}", file=self.path, allowed=_CUT)
+            raise ScanFault(f"the description names entry {index!r} of its {kind}", file=self.path, allowed=CUT)
         entry: dict[str, Any] = entries[index]
         return entry
 
@@ -55,7 +55,7 @@ class Document:
         end = start + (count - 1) * stride + dtype.itemsize * width
         if min(count - 1, start, stride) < 0 or max(end, view.get("byteOffset", 0) + view["byteLength"]) > len(raw):
             seen = f"an array of {count} entries ends after its buffer of {len(raw)} bytes"
-            raise ScanFault(seen, file=self.path, allowed=_CUT)
+            raise ScanFault(seen, file=self.path, allowed=CUT)
         array: npt.NDArray[Any] = np.ndarray((count, width), dtype, raw, start, (stride, dtype.itemsize))
         if accessor.get("normalized") and dtype.kind != "f":
             return np.maximum(array / float(np.iinfo(dtype).max), -1.0)
@@ -67,20 +67,20 @@ class Document:
             raw = self._content(entry.get("uri"))
             if len(raw) < entry["byteLength"]:
                 seen = f"a buffer of {entry['byteLength']} bytes is promised, {len(raw)} are there"
-                raise ScanFault(seen, file=self.path, allowed=_CUT)
+                raise ScanFault(seen, file=self.path, allowed=CUT)
             self._buffers[index] = raw
         return self._buffers[index]
 
     def _content(self, uri: str | None) -> bytes:
         if uri is None:
             if self.binary is None:
-                raise ScanFault("the file lacks its binary part", file=self.path, allowed=_CUT)
+                raise ScanFault("the file lacks its binary part", file=self.path, allowed=CUT)
             return self.binary
         if uri.startswith("data:"):
             try:
                 return base64.b64decode(uri.partition(",")[2], validate=True)
             except binascii.Error:
-                raise ScanFault("a buffer inside the file is no base64", file=self.path, allowed=_CUT) from None
+                raise ScanFault("a buffer inside the file is no base64", file=self.path, allowed=CUT) from None
         name = unquote(uri)
         beside = self.path.parent / name
         if "://" in name or Path(name).is_absolute() or ".." in Path(name).parts:
@@ -104,7 +104,7 @@ def open_document(path: Path) -> Document:
     try:
         tree = json.loads(text)
     except (ValueError, RecursionError):
-        raise ScanFault("its description is no JSON", file=path, allowed=_CUT) from None
+        raise ScanFault("its description is no JSON", file=path, allowed=CUT) from None
     if not isinstance(tree, dict) or not str(tree.get("asset", {}).get("version", "")).startswith("2."):
         raise ScanFault("the file is not glTF version 2", file=path, allowed="export it as glTF 2.0 or GLB")
     strange = set(tree.get("extensionsRequired", [])) - FINE
@@ -120,15 +120,15 @@ def _chunks(raw: bytes, path: Path) -> tuple[bytes, bytes | None]:
     if version != 2:
         raise ScanFault(f"the file is GLB version {version}", file=path, allowed="only version 2 is read")
     if length > len(raw):
-        raise ScanFault(f"the header promises {length} bytes, the file holds {len(raw)}", file=path, allowed=_CUT)
+        raise ScanFault(f"the header promises {length} bytes, the file holds {len(raw)}", file=path, allowed=CUT)
     chunks: list[tuple[int, bytes]] = []
     at = 12
     while at + 8 <= length:
         size, kind = struct.unpack_from("<II", raw, at)
         if at + 8 + size > length:
-            raise ScanFault(f"a part of {size} bytes is promised, the file ends before", file=path, allowed=_CUT)
+            raise ScanFault(f"a part of {size} bytes is promised, the file ends before", file=path, allowed=CUT)
         chunks.append((kind, raw[at + 8 : at + 8 + size]))
         at += 8 + size
     if not chunks or chunks[0][0] != 0x4E4F534A:
-        raise ScanFault("the file lacks its description", file=path, allowed=_CUT)
+        raise ScanFault("the file lacks its description", file=path, allowed=CUT)
     return chunks[0][1], chunks[1][1] if len(chunks) > 1 and chunks[1][0] == 0x004E4942 else None

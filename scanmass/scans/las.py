@@ -15,8 +15,8 @@ from scanmass.scans.blocks import BLOCK_POINTS, block_of
 from scanmass.scans.las_header import check_header
 from scanmass.scans.scan import Block, Scan, ViewHead
 from scanmass.scans.views import ViewTable
+from scanmass.scans.wording import CUT
 
-_CUT = "the file is cut or corrupt: copy or export it again"
 MOST_SETUPS = 1000
 """More different source numbers than this are no scanner setups."""
 
@@ -65,7 +65,7 @@ def _opened(path: Path) -> Iterator[Any]:
     except (ScanFault, KeyboardInterrupt, SystemExit, GeneratorExit, TypeError, AttributeError, NameError):
         raise  # a fault found already, an interruption, or an error of this package's own
     except BaseException as error:  # the unpacker's panics are no Exception
-        raise ScanFault(f"the file cannot be read ({str(error)[:80]})", file=path, allowed=_CUT) from None
+        raise ScanFault(f"the file cannot be read ({str(error)[:80]})", file=path, allowed=CUT) from None
 
 
 def _check_size(path: Path, header: Any) -> None:
@@ -76,7 +76,7 @@ def _check_size(path: Path, header: Any) -> None:
         promised += count * int(header.point_format.size)
     if count == 0 or promised > size:
         seen = f"the header promises {count} points in {promised} bytes, the file holds {size} bytes"
-        raise ScanFault(seen, file=path, allowed=_CUT if count else "at least 500 points are needed")
+        raise ScanFault(seen, file=path, allowed=CUT if count else "at least 500 points are needed")
 
 
 def _chunks(path: Path) -> Iterator[Any]:
@@ -86,7 +86,7 @@ def _chunks(path: Path) -> Iterator[Any]:
             left -= len(chunk)
             yield chunk
         if left:
-            raise ScanFault(f"{left} of the points that the header promises are missing", file=path, allowed=_CUT)
+            raise ScanFault(f"{left} of the points that the header promises are missing", file=path, allowed=CUT)
 
 
 def _survey(path: Path, has_colour: bool) -> tuple[ViewTable | None, float]:

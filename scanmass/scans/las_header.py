@@ -6,8 +6,8 @@ import struct
 from pathlib import Path
 
 from scanmass.errors import ScanFault
+from scanmass.scans.wording import CUT
 
-_CUT = "the file is cut or corrupt: copy or export it again"
 RECORD_HEAD, LONG_RECORD_HEAD = 54, 60
 LEAST_HEADER = 227
 """Bytes of the headers of versions 1.0 to 1.2; 1.4 has 375."""
@@ -25,7 +25,7 @@ def check_header(path: Path) -> None:
     with path.open("rb") as stream:
         head = stream.read(375)
         if len(head) < LEAST_HEADER:
-            raise ScanFault("the file ends within its header", file=path, allowed=_CUT)
+            raise ScanFault("the file ends within its header", file=path, allowed=CUT)
         minor = head[25]
         header_size, points_at, records = struct.unpack_from("<HII", head, 94)
         if head[24] != 1 or minor > 4:
@@ -33,14 +33,14 @@ def check_header(path: Path) -> None:
             raise ScanFault(seen, file=path, allowed="versions 1.0 to 1.4 are read")
         if not LEAST_HEADER <= header_size <= points_at <= size:
             seen = f"the header of {header_size} bytes puts the first point at byte {points_at} of {size}"
-            raise ScanFault(seen, file=path, allowed=_CUT)
+            raise ScanFault(seen, file=path, allowed=CUT)
         at = header_size
         for _ in range(records):
             stream.seek(at)
             record = stream.read(RECORD_HEAD)
             at += RECORD_HEAD + (struct.unpack_from("<H", record, 20)[0] if len(record) == RECORD_HEAD else size)
             if at > points_at:
-                raise ScanFault(f"{records} header records do not fit before the points", file=path, allowed=_CUT)
+                raise ScanFault(f"{records} header records do not fit before the points", file=path, allowed=CUT)
     if minor == 4 and len(head) == 375:
         _check_long_records(path, size, *struct.unpack_from("<QI", head, 235))
     if head[104] & 0x80:
@@ -56,7 +56,7 @@ def _check_long_records(path: Path, size: int, at: int, records: int) -> None:
             at += LONG_RECORD_HEAD
             at += struct.unpack_from("<Q", record, 20)[0] if len(record) == LONG_RECORD_HEAD else size
             if at > size:
-                raise ScanFault(f"{records} records after the points do not fit", file=path, allowed=_CUT)
+                raise ScanFault(f"{records} records after the points do not fit", file=path, allowed=CUT)
 
 
 def _check_chunk_table(path: Path, size: int, points_at: int, point_size: int) -> None:
@@ -72,4 +72,4 @@ def _check_chunk_table(path: Path, size: int, points_at: int, point_size: int) -
         table = stream.read(8)
     chunks = struct.unpack_from("<I", table, 4)[0] if len(table) == 8 else size
     if chunks * max(point_size, 1) > size:
-        raise ScanFault("the table of the compressed points does not fit the file", file=path, allowed=_CUT)
+        raise ScanFault("the table of the compressed points does not fit the file", file=path, allowed=CUT)

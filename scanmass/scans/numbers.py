@@ -50,7 +50,7 @@ def _number(data, at, powers):  # type: ignore[no-untyped-def]
     """The plain decimal number at ``at`` and the place after it, or place -1.
 
     Up to 15 digits and a power of ten up to 22 give the nearest float in one rounding (Clinger 1990); longer
-    numbers come within two units of the last place. Powers beyond 10^300 are left to the slow path.
+    numbers come within 4e-16 of themselves. Powers beyond 10^300 are left to the slow path.
     """
     n = len(data)
     negative = data[at] == 45

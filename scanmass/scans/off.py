@@ -13,8 +13,8 @@ from scanmass.scans.memory import mesh_scan
 from scanmass.scans.numbers import Columns, parse_lines
 from scanmass.scans.polygons import Triangles, fanned
 from scanmass.scans.scan import Scan
+from scanmass.scans.wording import CUT_OR_MISCOUNTED
 
-_CUT = "the file is cut or its counts are wrong: copy or export it again"
 HEADS = (b"OFF", b"COFF", b"NOFF", b"CNOFF")
 """C: a colour follows the coordinates, N: a normal does."""
 
@@ -43,7 +43,7 @@ def read_off(path: Path) -> Scan:
     points, faces = _counts(body, path)
     if points + faces > len(body) - 1:
         seen = f"the head counts {points} points and {faces} faces, but {len(body) - 1} lines follow"
-        raise ScanFault(seen, file=path, allowed=_CUT)
+        raise ScanFault(seen, file=path, allowed=CUT_OR_MISCOUNTED)
     width = len(body[1].split()) if points else 0
     need = 3 + 3 * (b"N" in word)
     if width < need:
@@ -87,5 +87,7 @@ def _faces(lines: list[bytes], points: int, path: Path) -> Triangles:
             corners += map(int, words[1 : n + 1])
         numbers: npt.NDArray[np.int64] = np.array(corners, np.int64)
     except (ValueError, OverflowError):
-        raise ScanFault("a line of a face does not hold the corners it counts", file=path, allowed=_CUT) from None
+        raise ScanFault(
+            "a line of a face does not hold the corners it counts", file=path, allowed=CUT_OR_MISCOUNTED
+        ) from None
     return fanned(numbers, np.array(counts, np.int64), points, path.name)

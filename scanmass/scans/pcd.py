@@ -11,22 +11,22 @@ import numpy as np
 import numpy.typing as npt
 
 from scanmass.errors import Note, ScanFault
-from scanmass.scans.blocks import BLOCK_POINTS, block_of
+from scanmass.scans.blocks import BLOCK_POINTS, at_zero, block_of
 from scanmass.scans.names import AXES, COLOURS, columns_of
 from scanmass.scans.numbers import Columns, line_blocks, parse_lines
 from scanmass.scans.scan import Block, FloatArray, Scan, ViewHead
 from scanmass.scans.views import ViewTable, view_table
+from scanmass.scans.wording import CUT_OR_MISCOUNTED
 
 KEYS = ("VERSION", "FIELDS", "COLUMNS", "SIZE", "TYPE", "COUNT", "WIDTH", "HEIGHT", "VIEWPOINT", "POINTS", "DATA")
 _KINDS = {"F": "f", "I": "i", "U": "u"}
-_CUT = "the file is cut or its header is wrong: copy or export it again"
 
 
 def read_pcd(path: Path) -> Scan:
     """The scan in a PCD file, by the format's published description (version 0.7).
 
-    Points of NaN are places where an organised cloud has no return. A viewpoint other than the default is taken
-    for the scanner's position in the frame of the points; the points themselves stay as they are.
+    Points of NaN, or at the very origin, are places where an organised cloud has no return. A viewpoint other
+    than the default is taken for the scanner's position in the frame of the points; the points stay as they are.
 
     Raises
     ------
@@ -95,7 +95,7 @@ class _Layout:
     def _check(self, needed: int) -> None:
         if self.path.stat().st_size - self.offset < needed:
             seen = f"the header promises {self.points} points of {self.dtype.itemsize} bytes, but the file ends before"
-            raise ScanFault(seen, file=self.path, allowed=_CUT)
+            raise ScanFault(seen, file=self.path, allowed=CUT_OR_MISCOUNTED)
 
     def _ascii(self) -> Iterator[npt.NDArray[Any]]:
         fields = [(name, int(np.prod(self.dtype[name].shape))) for name in self.dtype.names or ()]
@@ -113,9 +113,8 @@ class _Layout:
             left -= len(values)
             yield rows
         if left:
-            raise ScanFault(
-                f"the header promises {self.points} points, but {left} are missing", file=self.path, allowed=_CUT
-            )
+            seen = f"the header promises {self.points} points, but {left} are missing"
+            raise ScanFault(seen, file=self.path, allowed=CUT_OR_MISCOUNTED)
 
     def _compressed(self) -> Iterator[npt.NDArray[Any]]:
         # numba is not needed for the other forms.
@@ -126,7 +125,7 @@ class _Layout:
         packed, size = (int(n) for n in raw[:8].view("<u4"))
         data = unpacked(raw[8 : 8 + packed], size)
         if data is None:
-            raise ScanFault("the compressed points cannot be unpacked", file=self.path, allowed=_CUT)
+            raise ScanFault("the compressed points cannot be unpacked", file=self.path, allowed=CUT_OR_MISCOUNTED)
         fields, at = {}, 0
         for name in self.dtype.names or ():
             end = at + self.points * self.dtype[name].itemsize
@@ -147,7 +146,7 @@ class _Layout:
             seen = (
                 f"the header promises {self.points} points of {self.dtype.itemsize} bytes, the compressed data differ"
             )
-            raise ScanFault(seen, file=self.path, allowed=_CUT)
+            raise ScanFault(seen, file=self.path, allowed=CUT_OR_MISCOUNTED)
 
 
 def _layout(path: Path) -> _Layout:
@@ -246,6 +245,7 @@ def _blocks(layout: _Layout, table: ViewTable | None) -> Iterator[Block]:
         if layout.packed_colour is not None:
             block = replace(block, colours=_unpacked_colour(rows[f"p{layout.packed_colour}"]))
         if layout.height > 1:
+            block.points[at_zero(block.points)] = np.nan
             row, column = np.divmod(np.arange(at, at + len(rows)), layout.width)
             block = replace(block, rows=row.astype(np.int32), columns=column.astype(np.int32))
         at += len(rows)

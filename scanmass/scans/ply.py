@@ -15,13 +15,14 @@ import numpy as np
 import numpy.typing as npt
 
 from scanmass.errors import Note, ScanFault
-from scanmass.scans.blocks import block_of
+from scanmass.scans.blocks import at_zero, block_of
 from scanmass.scans.names import AXES, columns_of
 from scanmass.scans.ply_header import Header, read_header
 from scanmass.scans.ply_rows import Lists, element_offset, lists, scalars
 from scanmass.scans.polygons import Triangles, check_range, fanned
 from scanmass.scans.scan import Block, Scan, ViewHead
 from scanmass.scans.views import ViewTable, view_table
+from scanmass.scans.wording import CUT_OR_MISCOUNTED
 
 FACE_LISTS = ("vertex_indices", "vertex_index")
 
@@ -93,8 +94,7 @@ class _Vertex:
         least = 2 * len(element.properties) * element.count - 1
         if least > self.path.stat().st_size - self.header.data_offset:
             seen = f"the header promises {element.count} of the element {element.name}, but the file ends before"
-            allowed = "the file is cut or its header is wrong: copy or export it again"
-            raise ScanFault(seen, file=self.path, allowed=allowed)
+            raise ScanFault(seen, file=self.path, allowed=CUT_OR_MISCOUNTED)
 
     def blocks(self, names: tuple[str, ...]) -> Iterator[dict[str, npt.NDArray[Any]]]:
         """The named properties, block by block."""
@@ -132,6 +132,7 @@ def _blocks(vertex: _Vertex, table: ViewTable | None, grid: _Grid | None) -> Ite
         block = block_of(columns, vertex.colour_top)
         n = len(block.points)
         if grid is not None:
+            block.points[at_zero(block.points)] = np.nan
             block = replace(block, rows=grid.rows[at : at + n], columns=grid.columns[at : at + n])
         at += n
         if table is None:

@@ -15,6 +15,7 @@ from scanmass.errors import ScanFault
 from scanmass.scans.blocks import BLOCK_POINTS
 from scanmass.scans.numbers import Columns, line_blocks, parse_lines
 from scanmass.scans.ply_header import Element, Header
+from scanmass.scans.wording import CUT, CUT_OR_MISCOUNTED
 
 FloatArray = npt.NDArray[np.float64]
 Scalars = dict[int, npt.NDArray[Any]]
@@ -240,7 +241,7 @@ def _uneven_lists(text: bytes, element: Element, wanted: int, path: Path, first:
                 at += length
         except (ValueError, IndexError):
             seen = f"line {number} does not hold what the header says of the element {element.name}"
-            raise ScanFault(seen, file=path, allowed="the file is cut or corrupt: export it again") from None
+            raise ScanFault(seen, file=path, allowed=CUT) from None
     try:
         values = np.array(items, dtype=np.float64)
     except ValueError:
@@ -256,4 +257,4 @@ def _whole(values: npt.NDArray[Any], path: Path) -> npt.NDArray[np.int64]:
 
 def _cut(path: Path, element: Element) -> ScanFault:
     seen = f"the header promises {element.count} of the element {element.name}, but the file ends before"
-    return ScanFault(seen, file=path, allowed="the file is cut or its header is wrong: copy or export it again")
+    return ScanFault(seen, file=path, allowed=CUT_OR_MISCOUNTED)

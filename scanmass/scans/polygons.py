@@ -9,6 +9,7 @@ import numpy as np
 import numpy.typing as npt
 
 from scanmass.errors import Note, ScanFault
+from scanmass.scans.wording import CUT
 
 IntArray = npt.NDArray[np.int64]
 
@@ -58,5 +59,5 @@ def check_range(least: int, greatest: int, points: int, file: str) -> None:
         raise ScanFault(
             f"a face names point number {wrong}, counted from 0, but the file holds {points} points",
             file=file,
-            allowed="the file is cut or corrupt: export it again",
+            allowed=CUT,
         )

@@ -21,6 +21,7 @@ class Survey:
     """Of one scan, in its own unit: ``usable`` finite points, the ends of their box ``low``, ``high`` (3,).
 
     ``spreads`` (3,): standard deviations along the principal axes of the points, ascending.
+    ``at_origin``: points whose three coordinates are all exactly zero.
     ``step``: the distance between neighbouring stored numbers if all are single precision, else 0.
     """
 
@@ -29,6 +30,7 @@ class Survey:
     high: FloatArray
     spreads: FloatArray
     step: float
+    at_origin: int = 0
 
     @property
     def size(self) -> float:
@@ -47,7 +49,7 @@ def survey(scan: Scan) -> Survey:
     ScanFault
         Where the file turns out to be cut or corrupt on the way.
     """
-    usable, single = 0, True
+    usable, zeros, single = 0, 0, True
     box = np.array([[np.inf] * 3, [-np.inf] * 3])
     first, sums = np.zeros(3), np.zeros((4, 3))
     for block in scan.blocks():
@@ -56,7 +58,8 @@ def survey(scan: Scan) -> Survey:
         if usable == 0:
             first = block.points[0].copy()
         usable += len(block.points)
-        single = bool(_gather(block.points, first, box, sums)) and single
+        block_single, block_zeros = _gather(block.points, first, box, sums)
+        single, zeros = single and bool(block_single), zeros + int(block_zeros)
     # Coordinates near the greatest float overflow here; they are refused for their size.
     with np.errstate(over="ignore", invalid="ignore"):
         sums /= max(usable, 1)
@@ -67,15 +70,16 @@ def survey(scan: Scan) -> Survey:
         spreads = np.sqrt(np.maximum(np.linalg.eigvalsh(covariance), 0.0))
     farthest = float(np.abs(box).max()) if usable and np.isfinite(size) else 0.0
     step = float(np.spacing(np.float32(farthest))) if single and 0.0 < farthest < GREATEST_SINGLE else 0.0
-    return Survey(usable, box[0], box[1], spreads, step)
+    return Survey(usable, box[0], box[1], spreads, step, zeros)
 
 
 @njit(cache=True)
 def _gather(points, first, box, sums):  # type: ignore[no-untyped-def]
-    """Adds the points' box, their sum and their products about ``first``; whether all are single precision."""
+    """Adds the points' box, sum and products about ``first``; are all single precision, and how many are zero."""
     part = np.zeros((4, 3))
-    single = True
+    single, zeros = True, 0
     for i in range(len(points)):
+        zeros += points[i, 0] == 0.0 and points[i, 1] == 0.0 and points[i, 2] == 0.0
         for j in range(3):
             x = points[i, j]
             box[0, j] = min(box[0, j], x)
@@ -90,7 +94,7 @@ def _gather(points, first, box, sums):  # type: ignore[no-untyped-def]
             sums += part
             part[:] = 0.0
     sums += part
-    return single
+    return single, zeros
 
 
 def is_closed(scan: Scan) -> bool:

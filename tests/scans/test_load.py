@@ -205,6 +205,14 @@ def test_single_precision_far_from_the_origin_is_said(tmp_path: Path, ball) -> N
     assert load([ply(tmp_path / "c.ply", ball.points, "<f4")], "mm")[0].warnings == ()
 
 
+def test_points_on_one_another_at_the_origin_are_said(tmp_path: Path, ball) -> None:
+    points = ball.points.copy()
+    points[:5] = 0
+    (scan,) = load([ply(tmp_path / "a.ply", points)], "mm")
+    assert [note.code for note in scan.warnings] == ["points-at-origin"]
+    assert scan.warnings[0].text.startswith("a.ply: 5 points lie exactly at 0, 0, 0")
+
+
 def test_points_without_a_face_are_said(tmp_path: Path) -> None:
     mesh = trimesh.creation.icosphere(subdivisions=3, radius=50)
     loose = trimesh.Trimesh(np.vstack([mesh.vertices, [[0, 0, 0]]]), mesh.faces, process=False)
