@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Literal
 
 import numpy as np
 import numpy.typing as npt
 
 from scanmass.errors import Note
+from scanmass.geometry.moments import translated
+from scanmass.geometry.polyhedron import face_areas
 
 FloatArray = npt.NDArray[np.float64]
 Underside = Literal["seen", "flat", "hollow", "unknown"]
@@ -57,3 +59,22 @@ class Surface:
             raise ValueError(f"faces must be (m, 3), got {self.faces.shape}")
         if self.inferred.shape != (len(self.faces),):
             raise ValueError(f"inferred must be ({len(self.faces)},), got {self.inferred.shape}")
+
+    @property
+    def observed_fraction(self) -> float:
+        """Share of the area that lies on scan points, 0 to 1."""
+        area, _ = face_areas(self.vertices, self.faces)
+        return float(area[~self.inferred].sum() / area.sum())
+
+    def moved(self, shift: FloatArray) -> Surface:
+        """The same surface moved by ``shift`` (3,), closures and all."""
+        return replace(
+            self,
+            vertices=self.vertices + shift,
+            closures=tuple(Closure(c.name, translated(c.moments, shift)) for c in self.closures),
+            coarse_moments=None if self.coarse_moments is None else translated(self.coarse_moments, shift),
+        )
+
+    def noted(self, *, assumptions: tuple[Note, ...] = (), warnings: tuple[Note, ...] = ()) -> Surface:
+        """The same surface with more notes, put before its own."""
+        return replace(self, assumptions=(*assumptions, *self.assumptions), warnings=(*warnings, *self.warnings))

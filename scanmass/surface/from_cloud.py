@@ -1,0 +1,37 @@
+"""A measured surface from an oriented cloud, start to finish."""
+
+from __future__ import annotations
+
+from scanmass.cloud.cloud import Cloud
+from scanmass.progress import Progress, silent
+from scanmass.surface.check import thin_walls
+from scanmass.surface.close import close
+from scanmass.surface.mesh import FloatArray
+from scanmass.surface.reconstruct import reconstruct
+from scanmass.surface.refine import refine
+from scanmass.surface.surface import Surface, Underside
+
+
+def surface_from_cloud(
+    cloud: Cloud,
+    *,
+    resolution: float | None = None,
+    underside: Underside = "unknown",
+    hollow_depth: float | None = None,
+    up: FloatArray | None = None,
+    contact_height: float | None = None,
+    progress: Progress = silent,
+) -> Surface:
+    """Reconstruct, refine, close and check; see each for what it does, needs and raises."""
+    coarse = reconstruct(cloud, resolution=resolution, progress=progress)
+    surface = close(
+        refine(coarse, cloud, progress=progress),
+        cloud,
+        underside=underside,
+        hollow_depth=hollow_depth,
+        up=up,
+        contact_height=contact_height,
+        coarse_moments=coarse.moments,
+        progress=progress,
+    )
+    return surface.noted(warnings=thin_walls(surface))

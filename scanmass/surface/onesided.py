@@ -1,0 +1,59 @@
+"""From how many directions the object was seen."""
+
+from __future__ import annotations
+
+import numpy as np
+import numpy.typing as npt
+
+from scanmass.errors import Declined
+from scanmass.geometry.polyhedron import face_areas
+from scanmass.surface.mesh import FloatArray, Mesh
+
+DIRECTIONS = 500
+HALF = 0.5
+"""A direction counts as seen when at least this share of the surface that faces it was seen."""
+LEAST_UNSEEN = 0.3
+"""Share of directions from which a closed mass is declined. One view of a sphere, and a hemisphere standing on its
+base, miss 0.33 (without up no scan can tell them apart); a cube without its base 0.13."""
+DOWNWARD = -0.3
+"""With a known up, directions that look up from below this (sine) are the underside's, and left to its closure."""
+LEAST_UNSEEN_ABOVE = 0.25
+
+
+def sphere_directions(n: int = DIRECTIONS) -> FloatArray:
+    """Unit vectors (n, 3) spread evenly: a spiral of equal areas turning by the golden angle."""
+    z = 1.0 - (2.0 * np.arange(n) + 1.0) / n
+    turn = np.arange(n) * np.pi * (3.0 - np.sqrt(5.0))
+    radius = np.sqrt(1.0 - z * z)
+    return np.stack([radius * np.cos(turn), radius * np.sin(turn), z], axis=1)
+
+
+def unseen_share(mesh: Mesh, inferred: npt.NDArray[np.bool_], up: FloatArray | None) -> float:
+    """Share of the directions (above the underside's, with ``up``) that mostly face what was not seen."""
+    area, normals = face_areas(mesh.vertices, mesh.faces)
+    directions = sphere_directions()
+    if up is not None:
+        directions = directions[directions @ up > DOWNWARD]
+    seen = np.zeros(len(directions))
+    total = np.zeros(len(directions))
+    for k, direction in enumerate(directions):
+        facing = area * np.maximum(normals @ direction, 0.0)
+        total[k] = facing.sum()
+        seen[k] = facing[~inferred].sum()
+    return float(np.mean(seen < HALF * total))
+
+
+def require_all_round(mesh: Mesh, inferred: npt.NDArray[np.bool_], up: FloatArray | None) -> None:
+    """Raise Declined where the scan saw the object from too few sides to close it."""
+    share = unseen_share(mesh, inferred, up)
+    if up is None and share > LEAST_UNSEEN:
+        raise Declined(
+            f"the scan is one-sided: {share:.0%} of all directions look at surface that was not seen",
+            allowed="scan the other sides too, or declare scan.up and surface.underside (flat or hollow)",
+        )
+    if up is not None and share > LEAST_UNSEEN_ABOVE:
+        raise Declined(
+            f"the scan is one-sided: {share:.0%} of the directions beside and above the object look at surface "
+            "that was not seen",
+            allowed="scan the other sides too: a declared underside closes the object from below only",
+        )
