@@ -142,7 +142,9 @@ def _loose(scan: Scan) -> tuple[Note, ...]:
     if scan.faces is None:
         return ()
     points = sum(len(block.points) for block in scan.blocks())
-    loose = points - len(np.unique(scan.faces))
+    used = np.zeros(points, bool)
+    used[scan.faces] = True
+    loose = points - int(used.sum())
     if loose == 0:
         return ()
     return (Note("points-without-face", f"{scan.file}: {loose} of {points} points belong to no face of the mesh."),)

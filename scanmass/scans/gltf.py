@@ -13,6 +13,7 @@ import numpy.typing as npt
 from scanmass.errors import Note, ScanFault
 from scanmass.geometry.edges import welded
 from scanmass.scans.blocks import eight_bit
+from scanmass.scans.corners import shared
 from scanmass.scans.gltf_document import Document, open_document
 from scanmass.scans.memory import mesh_scan
 from scanmass.scans.polygons import check_range
@@ -71,7 +72,8 @@ def _mesh(path: Path, parts: list[_Part], total: int) -> Scan:
         text = f"{path.name}: {total - len(parts)} sets of loose points beside the meshes were not read."
         warnings += (Note("loose-points-unread", text),)
     if np.isfinite(points).all():
-        points, faces = welded(points, faces)
+        places, which = shared(points)
+        points, faces = welded(places, which[faces])
     return mesh_scan(path, "gltf", points, faces, unit="m", warnings=warnings)
 
 

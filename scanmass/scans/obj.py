@@ -67,20 +67,31 @@ def _numbers(lines: list[bytes], key: bytes, path: Path) -> FloatArray:
         ) from None
 
 
-def _faces(lines: list[bytes], points: int, path: Path) -> tuple[IntArray, IntArray]:
-    """Corners of all faces end to end, from 0, and the number of each."""
-    found = [(k, line[1:]) for k, line in enumerate(lines) if line.startswith((b"f ", b"f\t"))]
-    if not found:
-        return np.empty(0, np.int64), np.empty(0, np.int64)
-    text = re.sub(rb"/\S*", b"", b"\n".join(line for _, line in found))
+def _corners(text: bytes, path: Path) -> tuple[FloatArray, IntArray]:
+    """Numbers of all lines end to end, and how many each holds; fast where all hold as many as the first."""
+    width = len(text.partition(b"\n")[0].split())
+    try:
+        rows = parse_lines(text, Columns(max(width, 1), tuple(range(width))), path.name, 1)
+    except ScanFault:
+        rows = np.empty((0, width))
+    if len(rows) == text.count(b"\n") + 1:
+        return rows.reshape(-1), np.full(len(rows), width)
     faces = [line.split() for line in text.split(b"\n")]
-    counts = np.array([len(words) for words in faces], np.int64)
     try:
         corners = np.array([word for words in faces for word in words], dtype=np.float64)
     except ValueError:
-        raise ScanFault(
-            "a face names its corners by something else than numbers", file=path, allowed="f 1 2 3"
-        ) from None
+        seen = "a face names its corners by something else than numbers"
+        raise ScanFault(seen, file=path, allowed="f 1 2 3") from None
+    return corners, np.array([len(words) for words in faces], np.int64)
+
+
+def _faces(lines: list[bytes], points: int, path: Path) -> tuple[IntArray, IntArray]:
+    """Corners of all faces end to end, from 0, and the number of each."""
+    marks = (b"f ", b"f\t")
+    text = b"\n".join([line[1:] for line in lines if line.startswith(marks)])
+    if not text:
+        return np.empty(0, np.int64), np.empty(0, np.int64)
+    corners, counts = _corners(re.sub(rb"/\S*", b"", text) if b"/" in text else text, path)
     if not np.isfinite(corners).all() or (np.abs(corners) > 2**53).any() or (corners != np.round(corners)).any():
         raise ScanFault("a face names its corners by something else than whole numbers", file=path, allowed="f 1 2 3")
     numbers = corners.astype(np.int64)
@@ -92,7 +103,7 @@ def _faces(lines: list[bytes], points: int, path: Path) -> tuple[IntArray, IntAr
     backward = numbers < 0
     if backward.any():
         before = np.cumsum([line.startswith((b"v ", b"v\t")) for line in lines])
-        known = np.repeat(before[[k for k, _ in found]], counts)
+        known = np.repeat(before[[line.startswith(marks) for line in lines]], counts)
         numbers = np.where(backward, known + numbers, numbers - 1)
         check_range(int(numbers.min()), int(numbers.max()), points, path.name)
         return numbers, counts

@@ -75,6 +75,13 @@ def _counts(body: list[bytes], path: Path) -> tuple[int, int]:
 
 
 def _faces(lines: list[bytes], points: int, path: Path) -> Triangles:
+    if lines and len(lines[0].split()) == 4:
+        try:
+            rows = parse_lines(b"\n".join(lines), Columns(4, (0, 1, 2, 3)), path.name, 1)
+        except ScanFault:
+            rows = np.zeros((1, 4))
+        if (rows[:, 0] == 3).all() and (rows == np.round(rows)).all() and (np.abs(rows) < 2**53).all():
+            return fanned(rows[:, 1:].reshape(-1).astype(np.int64), np.full(len(rows), 3), points, path.name)
     counts: list[int] = []
     corners: list[int] = []
     try:

@@ -9,6 +9,7 @@ import numpy.typing as npt
 
 from scanmass.errors import Note, ScanFault
 from scanmass.geometry.edges import welded
+from scanmass.scans.corners import shared
 from scanmass.scans.memory import mesh_scan
 from scanmass.scans.numbers import Columns, parse_lines
 from scanmass.scans.scan import Scan
@@ -46,7 +47,8 @@ def read_stl(path: Path) -> Scan:
     if not np.isfinite(corners).all():
         seen = f"{int((~np.isfinite(corners)).any(axis=1).sum())} corners have coordinates that are not finite"
         raise ScanFault(seen, file=path, allowed="repair the mesh or export it again")
-    points, faces = welded(corners, np.arange(len(corners), dtype=np.int64).reshape(-1, 3))
+    places, which = shared(corners)
+    points, faces = welded(places, which.reshape(-1, 3))
     lost = len(corners) // 3 - len(faces)
     if lost:
         text = f"{path.name}: {lost} triangles with two corners in one place were left out: they hold no area."

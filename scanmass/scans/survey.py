@@ -8,6 +8,7 @@ import numpy as np
 from numba import njit
 
 from scanmass.geometry.edges import count_edges, welded
+from scanmass.scans.corners import shared
 from scanmass.scans.scan import FloatArray, Scan
 
 COARSE = 1e-5
@@ -103,5 +104,6 @@ def is_closed(scan: Scan) -> bool:
         return False
     if count_edges(scan.faces).closed:
         return True
-    _, faces = welded(scan.points(), scan.faces)
+    places, which = shared(scan.points())
+    _, faces = welded(places, which[scan.faces])
     return len(faces) > 0 and count_edges(faces).closed

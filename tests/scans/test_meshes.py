@@ -14,6 +14,7 @@ import trimesh
 
 from scanmass.errors import ScanFault
 from scanmass.geometry.edges import count_edges
+from scanmass.scans.corners import shared
 from scanmass.scans.table import read
 
 
@@ -233,3 +234,15 @@ def test_faults(tmp_path: Path, name: str, content: str, message: str) -> None:
     with pytest.raises(ScanFault) as fault:
         read(path)
     assert message in str(fault.value)
+
+
+def test_shared_corners_against_sorting() -> None:
+    rng = np.random.default_rng(0)
+    for points in (
+        rng.integers(-3, 4, (5000, 3)) / 8.0,
+        rng.normal(size=(5000, 3)).astype(np.float32).repeat(2, axis=0),
+    ):
+        found, which = shared(points.astype(float))
+        np.testing.assert_array_equal(found[which], points)
+        assert len(found) == len(np.unique(points, axis=0))
+        assert (np.maximum.accumulate(which)[1:] - np.maximum.accumulate(which)[:-1] <= 1).all()
