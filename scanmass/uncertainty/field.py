@@ -51,7 +51,8 @@ def fit_field(patches: Patches, left: FloatArray) -> Field:
     For patches j, l and the set S of views that saw both, m = |S|:
     Y = (m sum r_ja r_la - sum r_ja sum r_la) / 2 has the expectation m (m - 1)/2 x covariance, whatever the shape:
     what all views share cancels. Y is binned by distance below 0.35 of the size; one field of each shape and length
-    is fitted without negative parts, and the best kept.
+    is fitted without negative parts, and the best kept. Taking off each view's motion takes some of a long field with
+    it: in simulations lengths of 0.07 of the size came out at 0.05 to 0.07, of 0.2 at 0.08, the poses holding the rest.
     """
     clean = _clean(left)
     with_view = np.isfinite(clean).astype(np.float64)

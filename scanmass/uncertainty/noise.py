@@ -13,7 +13,7 @@ from scipy.stats import t as student
 from scanmass.errors import Note
 from scanmass.uncertainty.field import Field, correlation, fit_field
 from scanmass.uncertainty.patches import Patches
-from scanmass.uncertainty.rigid import RigidFit, fit_rigid
+from scanmass.uncertainty.rigid import RigidFit, fit_rigid, shrunk
 from scanmass.uncertainty.sources import factor
 
 FloatArray = npt.NDArray[np.float64]
@@ -21,6 +21,7 @@ Basis = Literal["views", "declared", "upper_bound", "none"]
 
 LEAST_VIEWS = 3
 _MOST_DEGREES = 60.0
+_ROUNDS = 2
 _LEAST_SHARED = 0.2
 """Below this share of the seen area in common, between-view differences say little of the whole."""
 
@@ -71,24 +72,29 @@ def from_views(patches: Patches, level: float = 0.95) -> NoiseModel:
     if not enough_views(patches):
         raise ValueError(f"{LEAST_VIEWS} views that share patches are needed, got {patches.views}")
     patches = patches.some_seen()
-    rigid = fit_rigid(patches)
-    field = fit_field(patches, rigid.left)
-    share = patches.shares()
-    v = patches.views
-    poses = np.sqrt(v / (v - 1.0)) * _moved(patches, share * rigid.field(patches)).T
+    fixed = fit_rigid(patches)
+    field = fit_field(patches, fixed.left)
+    for _ in range(_ROUNDS):
+        rigid = shrunk(patches, fixed, *_of_one_view(patches, field))
+        field = fit_field(patches, rigid.left)
+    share, v = patches.shares(), patches.views
+    poses = _pose_covariance(patches, rigid, share)
     noise = field_covariance(patches, field, share)
     degrees = (float(v - 1), min(_MOST_DEGREES, field.degrees_of_freedom))
     jack, jack_degrees = jackknife(patches, share), float(v - 1)
-    stretch = _stretch(jack, jack_degrees, (poses.T @ poses, noise), degrees, level)
+    stretch = _stretch(jack, jack_degrees, (poses, noise), degrees, level)
     return NoiseModel(
         "views",
         std=field.std,
         length=field.length,
         shape=field.shape,
-        shift_std=_per_view(rigid.shift, v),
-        rotation_std=_per_view(rigid.turn, v),
+        shift_std=rigid.shift_std,
+        rotation_std=rigid.turn_std,
         views=v,
-        parts=(("scan noise", factor(noise) * stretch, degrees[1]), ("view poses", poses * stretch, degrees[0])),
+        parts=(
+            ("scan noise", factor(noise) * stretch, degrees[1]),
+            ("view poses", factor(poses) * stretch, degrees[0]),
+        ),
         assumptions=(
             Note(
                 "errors-common-to-all-views-not-seen",
@@ -102,21 +108,38 @@ def from_views(patches: Patches, level: float = 0.95) -> NoiseModel:
 
 def field_covariance(patches: Patches, field: Field, share: FloatArray) -> FloatArray:
     """Covariance (10, 10) of the moments from each view's own field, through its share (J, V) of the surface."""
-    rho = correlation(cdist(patches.centres, patches.centres), field.length, field.shape)
-    # Patch means of one view go together by rho; different views are independent: sum over views of a_jv a_lv.
-    together = field.std**2 * rho * (share @ share.T)
-    own = _own_variance(patches, field, share)
+    within_view, own = _of_one_view(patches, field)
+    # Different views are independent: the sum over views of a_jv a_lv times what one view's patches have in common.
+    together = within_view * (share @ share.T)
     result: FloatArray = patches.moments.T @ together @ patches.moments
-    return result + (patches.moments * own[:, None]).T @ patches.moments
+    alone = (share**2 * own).sum(axis=1)
+    result += (patches.moments * alone[:, None]).T @ patches.moments
+    return result
 
 
-def _own_variance(patches: Patches, field: Field, share: FloatArray) -> FloatArray:
-    """(J,): variance of a patch's place from what is its own: scatter within over points, and more of it found."""
+def _of_one_view(patches: Patches, field: Field) -> tuple[FloatArray, FloatArray]:
+    """Covariance (J, J) of patch means of one view by its field, and variances (J, V) of what is a patch's own."""
+    rho = correlation(cdist(patches.centres, patches.centres), field.length, field.shape)
+    return field.std**2 * rho, _own(patches, field)
+
+
+def _own(patches: Patches, field: Field) -> FloatArray:
+    """(J, V): scatter within a patch over its points, and what was found beyond it."""
     typical = np.nanmedian(patches.within) if np.isfinite(patches.within).any() else 0.0
     within = np.where(np.isfinite(patches.within), patches.within, typical)
-    white = within / np.maximum(patches.counts, 1.0)
-    result: FloatArray = (share**2 * (white + field.own**2)).sum(axis=1)
+    result: FloatArray = within / np.maximum(patches.counts, 1.0) + field.own**2
     return result
+
+
+def _pose_covariance(patches: Patches, rigid: RigidFit, share: FloatArray) -> FloatArray:
+    """Covariance (10, 10) of the moments from independent motions of every view."""
+    arms = (patches.normals, np.cross(patches.centres, patches.normals))
+    covariance = np.zeros((10, 10))
+    for std, arm in zip((rigid.shift_std, rigid.turn_std), arms, strict=True):
+        for v in range(patches.views):
+            moved = patches.moments.T @ (share[:, v, None] * arm)
+            covariance += float(std or 0.0) ** 2 * (moved @ moved.T)
+    return covariance
 
 
 def jackknife(patches: Patches, share: FloatArray) -> FloatArray:
@@ -139,11 +162,6 @@ def jackknife(patches: Patches, share: FloatArray) -> FloatArray:
     return result
 
 
-def _moved(patches: Patches, outward: FloatArray) -> FloatArray:
-    """(10, V): change of the moments when patches move outward by (J, V) metres."""
-    return patches.moments.T @ outward
-
-
 def _stretch(
     jack: FloatArray,
     jack_degrees: float,
@@ -162,11 +180,6 @@ def _stretch(
     ratio = np.divide(floor, own, out=np.ones(10), where=own > 0)
     result: FloatArray = np.maximum(ratio, 1.0)
     return result
-
-
-def _per_view(motion: FloatArray, views: int) -> float:
-    """Standard deviation per axis of one view's motion, of (V, 3) motions whose sum is zero."""
-    return float(np.sqrt((motion**2).sum() / (3.0 * (views - 1.0))))
 
 
 def _incidence_warning(patches: Patches, rigid: RigidFit, share: FloatArray, noise: FloatArray) -> tuple[Note, ...]:

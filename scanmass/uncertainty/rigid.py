@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
+from scipy.optimize import nnls
 
 from scanmass.uncertainty.patches import Patches
 
@@ -15,20 +16,25 @@ _ROUNDS = 5
 _CUT = 3.0 * 1.4826
 _WEAK = 1e-4
 """Motions that the patches feel less than this share of the strongest are left at zero (a ball can turn freely)."""
+_FAINT = 0.05
 
 
 @dataclass(frozen=True)
 class RigidFit:
     """Motion of each view against their mean. ``shift`` (V, 3) metres, ``turn`` (V, 3) radians about the centre.
 
+    ``shift_std``, ``turn_std``: standard deviation per axis of a view's motion, None from least squares alone;
     ``incidence``: metres per unit cosine of incidence, common to all views, 0 where scanner places are unknown;
-    ``left`` (J, V): residuals with each view's motion taken off, NaN where not used.
+    ``used`` (J, V): what took part; ``left`` (J, V): residuals without each view's motion, NaN where unseen.
     """
 
     shift: FloatArray
     turn: FloatArray
     incidence: float
+    used: npt.NDArray[np.bool_]
     left: FloatArray
+    shift_std: float | None = None
+    turn_std: float | None = None
 
     def field(self, patches: Patches) -> FloatArray:
         """(J, V): how far each view's motion moves each patch outward."""
@@ -59,37 +65,77 @@ def fit_rigid(patches: Patches) -> RigidFit:
         if not kept.any() or np.array_equal(kept, used):
             break
         used = kept
+    incidence = float(solution[-1])
+    return _fit(patches, solution[:-1], incidence, used)
+
+
+def _fit(patches: Patches, motion: FloatArray, incidence: float, used: npt.NDArray[np.bool_]) -> RigidFit:
+    """From motions (6 V,), turns times the size."""
     v = patches.views
-    shift, turn = solution[: 3 * v].reshape(v, 3), solution[3 * v : 6 * v].reshape(v, 3) / patches.size
-    fit = RigidFit(shift, turn, float(solution[6 * v]), patches.residuals)
+    shift, turn = motion[: 3 * v].reshape(v, 3), motion[3 * v :].reshape(v, 3) / patches.size
+    fit = RigidFit(shift, turn, incidence, used, patches.residuals)
     left = patches.residuals - fit.field(patches)
-    if with_incidence:
-        left = left - fit.incidence * patches.towards
-    seen = patches.seen & np.isfinite(left)
-    return RigidFit(shift, turn, fit.incidence, np.where(seen, left, np.nan))
+    if incidence != 0.0:
+        left = left - incidence * patches.towards
+    return replace(fit, left=np.where(patches.seen, left, np.nan))
+
+
+def shrunk(patches: Patches, fit: RigidFit, together: FloatArray, alone: FloatArray) -> RigidFit:
+    """Motions as random effects: how large they are beyond what noise alone would feign, and each one's share of that.
+
+    Parameters
+    ----------
+    together : (J, J), covariance of patch means of one view that noise brings, without what is a patch's own
+    alone : (J, V), variance of what is a patch's own
+
+    Notes
+    -----
+    Least squares where views share little gives large motions from noise alone. With normal equations N m = b and
+    noise covariance M of b, the motion along an eigenvector u of N has the expected square
+    shift_std^2 |u_t|^2 + turn_std^2 |u_w|^2 + u.M u / lambda^2: two variances by weighted least squares without
+    negative parts; then each motion is shrunk by its signal's share (best linear prediction).
+    """
+    v = patches.views
+    r = np.where(fit.used, patches.residuals, 0.0)
+    if fit.incidence != 0.0:
+        r = r - fit.incidence * np.where(fit.used, patches.towards, 0.0)
+    per_view = _right_side(patches, fit.used)
+    right = sum(k @ r[:, b] for b, k in enumerate(per_view))
+    noise = sum(k @ together @ k.T + (k * alone[:, b]) @ k.T for b, k in enumerate(per_view))
+    values, vectors = np.linalg.eigh(_normal(patches, fit.used))
+    strong = values > _WEAK * values[-1]
+    values, vectors = values[strong], vectors[:, strong]
+    found = (vectors.T @ right) / values
+    feigned = np.einsum("ik,ij,jk->k", vectors, noise, vectors) / values**2
+    parts = np.stack([(vectors[: 3 * v] ** 2).sum(axis=0), (vectors[3 * v :] ** 2).sum(axis=0)], axis=1)
+    # A direction with next to no turn in it says nothing of turns (a ball's are never seen).
+    parts[parts < _FAINT] = 0.0
+    variances = np.zeros(2)
+    for _ in range(10):
+        weight = 1.0 / np.maximum(feigned + parts @ variances, 1e-300)
+        variances, _ = nnls(parts * weight[:, None], (found**2 - feigned) * weight)
+    signal = parts @ variances
+    share = np.divide(signal, signal + feigned, out=np.zeros_like(signal), where=signal > 0)
+    result = _fit(patches, vectors @ (share * found), fit.incidence, fit.used)
+    shift, turn = np.sqrt(variances)
+    return replace(result, shift_std=float(shift), turn_std=float(turn) / patches.size)
 
 
 def _solve(patches: Patches, used: npt.NDArray[np.bool_], with_incidence: bool) -> tuple[FloatArray, FloatArray]:
     """Solution (6 V + 1,) with turns times the size, and what is left (J, V)."""
-    v, at = patches.views, patches.centres / patches.size
-    arms = np.hstack([patches.normals, np.cross(at, patches.normals)])
-    weight = np.where(used, patches.counts / (patches.counts + 3.0), 0.0)
-    total = weight.sum(axis=1)
-    share = np.divide(weight, total[:, None], out=np.zeros_like(weight), where=total[:, None] > 0)
+    v = patches.views
+    weight, share = _weights(patches, used)
+    arms = _arms(patches)
     r = np.where(used, patches.residuals, 0.0)
     cosine = np.where(used, patches.towards, 0.0) if with_incidence else np.zeros_like(r)
-    # Eliminating s_j takes the weighted mean over its views off each row: (diag(w) - w w^T / sum w) on views.
+    per_view = _right_side(patches, used)
     normal = np.zeros((6 * v + 1, 6 * v + 1))
+    normal[:-1, :-1] = _normal(patches, used)
     right = np.zeros(6 * v + 1)
-    r0, c0 = r - (share * r).sum(axis=1)[:, None], cosine - (share * cosine).sum(axis=1)[:, None]
-    for a in range(v):
-        rows_a = _columns(a, v)
-        for b in range(v):
-            between = (weight[:, a] if a == b else 0.0) - weight[:, a] * share[:, b]
-            normal[np.ix_(rows_a, _columns(b, v))] = (arms * between[:, None]).T @ arms
-        right[rows_a] = arms.T @ (weight[:, a] * r0[:, a])
-        normal[rows_a, -1] = normal[-1, rows_a] = arms.T @ (weight[:, a] * c0[:, a])
-    normal[-1, -1], right[-1] = (weight * c0 * c0).sum(), (weight * c0 * r0).sum()
+    right[:-1] = sum(k @ r[:, b] for b, k in enumerate(per_view))
+    normal[:-1, -1] = normal[-1, :-1] = sum(k @ cosine[:, b] for b, k in enumerate(per_view))
+    c0 = cosine - (share * cosine).sum(axis=1)[:, None]
+    normal[-1, -1], right[-1] = (weight * c0 * c0).sum(), (weight * c0 * r).sum()
     # The mean motion of all views is the object's own; six directions of zero, and a ball has more.
     gauge = np.zeros((6, 6 * v + 1))
     for k in range(3):
@@ -102,6 +148,43 @@ def _solve(patches: Patches, used: npt.NDArray[np.bool_], with_incidence: bool) 
     misfit = r - motion - solution[-1] * cosine
     misfit -= (share * misfit).sum(axis=1)[:, None]
     return solution, misfit
+
+
+def _arms(patches: Patches) -> FloatArray:
+    """(J, 6): how far unit shifts, and unit turns over the size, move each patch outward."""
+    return np.hstack([patches.normals, np.cross(patches.centres / patches.size, patches.normals)])
+
+
+def _weights(patches: Patches, used: npt.NDArray[np.bool_]) -> tuple[FloatArray, FloatArray]:
+    """Weights n/(n + 3) (J, V), zero where not used, and each view's share of its patch's."""
+    weight = np.where(used, patches.counts / (patches.counts + 3.0), 0.0)
+    total = weight.sum(axis=1, keepdims=True)
+    return weight, np.divide(weight, total, out=np.zeros_like(weight), where=total > 0)
+
+
+def _right_side(patches: Patches, used: npt.NDArray[np.bool_]) -> list[FloatArray]:
+    """For each view b the matrix (6 V, J) that takes its residuals to the right side of the normal equations.
+
+    Eliminating s_j takes the weighted mean over its views off each row: diag(w) - w w^T / sum w between views.
+    """
+    v, arms = patches.views, _arms(patches)
+    weight, share = _weights(patches, used)
+    result = []
+    for b in range(v):
+        matrix = np.empty((6 * v, len(arms)))
+        for a in range(v):
+            between = (weight[:, a] if a == b else 0.0) - weight[:, a] * share[:, b]
+            matrix[_columns(a, v)] = (arms * between[:, None]).T
+        result.append(matrix)
+    return result
+
+
+def _normal(patches: Patches, used: npt.NDArray[np.bool_]) -> FloatArray:
+    v, arms = patches.views, _arms(patches)
+    normal = np.empty((6 * v, 6 * v))
+    for b, matrix in enumerate(_right_side(patches, used)):
+        normal[:, _columns(b, v)] = matrix @ arms
+    return normal
 
 
 def _columns(view: int, views: int) -> npt.NDArray[np.int64]:
