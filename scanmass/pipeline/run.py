@@ -81,7 +81,7 @@ def measure(
     try:
         # One thread in linear algebra: its sums depend on how many share them.
         with threadpool_limits(1):
-            scans = load_scans(paths, settings.scan.unit, progress=say)
+            scans = load_scans(paths, settings.scan.unit, executor=executor, progress=say)
             result = _measured(scans, settings, seed, say)
     finally:
         numba.set_num_threads(threads)

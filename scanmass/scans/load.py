@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from concurrent.futures import Executor
 from dataclasses import replace
 from pathlib import Path
 
@@ -22,11 +23,13 @@ def load(
     unit: str | None = None,
     pipeline_unit: str | None = None,
     *,
+    executor: Executor | None = None,
     progress: Progress = silent,
 ) -> tuple[Scan, ...]:
     """The scans of ``paths``, views of one object, in metres and fit to be measured.
 
-    ``unit`` is the one given at the command line, ``pipeline_unit`` the pipeline file's; either will do.
+    ``unit`` is the one given at the command line, ``pipeline_unit`` the pipeline file's; either will do. With an
+    ``executor`` the files are looked through side by side.
 
     Raises
     ------
@@ -39,13 +42,14 @@ def load(
         raise ScanFault("no scan is named", allowed="name at least one scan file")
     declared = _agreed(unit, pipeline_unit)
     scans: list[Scan] = []
-    surveys: list[Survey] = []
-    for done, path in enumerate(paths):
-        progress("read", done, len(paths))
+    for path in paths:
         scan = read(path)
         _refuse_twin(scan, scans)
         scans.append(scan)
-        surveys.append(survey(scan))
+    surveys: list[Survey] = []
+    for seen in map(survey, scans) if executor is None else executor.map(_survey_file, paths):
+        progress("read", len(surveys), len(paths))
+        surveys.append(seen)
     progress("read", len(paths), len(paths))
     known = [_with_unit(scan, seen, declared) for scan, seen in zip(scans, surveys, strict=True)]
     metres = [1.0 if scan.file_unit is None else metres_per(scan.file_unit) for scan in known]
@@ -53,6 +57,10 @@ def load(
         scan.in_metres(str(scan.file_unit), factor, str(scan.unit_from))
         for scan, factor in zip(admit(known, surveys, metres), metres, strict=True)
     )
+
+
+def _survey_file(path: str | Path) -> Survey:
+    return survey(read(path))
 
 
 def _agreed(unit: str | None, pipeline_unit: str | None) -> str | None:
