@@ -29,6 +29,7 @@ IndexArray = npt.NDArray[np.int64]
 
 _MANY_REDRAWN = 0.01
 _NOTABLY_UNSEEN = 0.02
+_MOST_PATCHES, _LEAST_PATCHES, _SAMPLES_PER_PATCH = 1000, 150, 12
 
 
 @dataclass(frozen=True)
@@ -92,7 +93,7 @@ def bound(
     """
     wanted = Declared() if declared is None else declared
     parts, centre = _about_own_centre(part_moments, densities, materials)
-    patched = patches.make(surface, cloud, centre=centre)
+    patched = patches.make(surface, cloud, centre=centre, count=_patch_count(cloud))
     model = _noise(surface, cloud, patched, wanted, coarse, level)
     shapes = {"": parts} | {c.name: _closed(parts, translated(c.moments, -centre)) for c in surface.closures}
     terms = _terms(surface, patched, model, wanted, parts, centre)
@@ -128,6 +129,14 @@ def bound(
         assumptions=model.assumptions + _assumptions(wanted, model),
         warnings=model.warnings + _warnings(surface, patched, parts, redrawn),
     )
+
+
+def _patch_count(cloud: Cloud | None) -> int:
+    """A thousand, or fewer where the views' samples are thin: a dozen of each view to a patch, never under 150."""
+    if cloud is None:
+        return _MOST_PATCHES
+    enough = len(cloud.points) // (_SAMPLES_PER_PATCH * max(len(cloud.view_names), 1))
+    return min(max(enough, _LEAST_PATCHES), _MOST_PATCHES)
 
 
 def _about_own_centre(

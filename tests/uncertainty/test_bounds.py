@@ -212,3 +212,13 @@ def test_views_bound_a_scanned_ball(surface_of, cloud_of, on_sphere):
 def test_same_seed_same_document(box):
     one, two = (as_document(run(box, declared=Declared(1e-4), seed=5)) for _ in range(2))
     assert json.dumps(one) == json.dumps(two)
+
+
+def test_thin_views_get_fewer_patches(surface_of, cloud_of, on_sphere):
+    rng = np.random.default_rng(4)
+    points = on_sphere(rng, 9000) * (0.5 + 0.001 * rng.normal(size=9000))[:, None]
+    cloud = cloud_of(points, rng.integers(0, 3, 9000))
+    found = run(surface_of(trimesh.creation.icosphere(5, 0.5)), cloud, densities=[Figure.exact(1000.0)])
+    # 9000 / (12 x 3); with a thousand patches hardly one would hold three samples of each view.
+    assert len(found.patches.areas) == pytest.approx(250, abs=5)
+    assert found.noise.basis == "views"
