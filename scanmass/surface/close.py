@@ -151,8 +151,8 @@ def close_gaps(
         shells=shell_labels(whole.faces)[0],
         closures=closures(mesh, spans),
         coarse_moments=coarse_moments,
-        assumptions=tuple(notes),
-        warnings=tuple(warnings),
+        assumptions=tuple(dict.fromkeys(notes)),
+        warnings=tuple(dict.fromkeys(warnings)),
     )
 
 

@@ -9,6 +9,7 @@ from scipy.sparse.csgraph import connected_components, dijkstra
 
 from scanmass.cloud.cloud import Cloud
 from scanmass.geometry.edges import half_edges, shell_labels
+from scanmass.geometry.harmonic import neighbour_matrix
 from scanmass.geometry.loops import untangled
 from scanmass.geometry.neighbours import nearest
 from scanmass.geometry.polyhedron import face_areas
@@ -24,6 +25,9 @@ GAP = 5.0
 """A gap whose middle is no farther than this from a sample is bridged well by the reconstruction: left as it is."""
 WIDEN = 6.0
 """Gaps are widened by so many pitches along the surface: back past the edge of the data, where it still is data."""
+BEYOND, SMOOTHING = 3.0, 4
+"""Paths along edges are longer the one way than the other: distances are known to so many pitches beyond, and averaged
+over neighbours so often, or the rim is ragged."""
 ISLAND = 0.05
 """A seen patch surrounded by a gap joins it when its area is below this share of the gap's."""
 LARGEST_PITCH = 8.0
@@ -63,8 +67,13 @@ def gaps(mesh: Mesh, distance: FloatArray, pitch: FloatArray) -> list[Mask]:
     # Each edge is there twice, once each way, with the same length; later duplicates must not add up.
     once = np.unique(edges[:, 0] * n + edges[:, 1], return_index=True)[1]
     graph = csr_matrix((length[once], edges[once].T), shape=(n, n))
-    reach = dijkstra(graph, directed=False, indices=seeds, min_only=True, limit=WIDEN)
-    region: Mask = np.any(np.isfinite(reach)[mesh.faces], axis=1)
+    reach = dijkstra(graph, directed=False, indices=seeds, min_only=True, limit=WIDEN + BEYOND)
+    reach = np.minimum(reach, WIDEN + BEYOND)
+    ring = neighbour_matrix(mesh.faces, n)
+    degree = np.asarray(ring.sum(axis=1)).ravel()
+    for _ in range(SMOOTHING):
+        reach = (reach + ring @ reach) / (1.0 + degree)
+    region: Mask = np.any((reach < WIDEN)[mesh.faces], axis=1)
     region = untangled(mesh.faces, _without_islands(mesh, untangled(mesh.faces, region)))
     labels = np.full(len(mesh.faces), -1)
     if region.all():

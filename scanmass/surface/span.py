@@ -129,6 +129,11 @@ def tangent_cone(mesh: Mesh, region: Mask) -> FloatArray:
     away = np.zeros_like(flat)
     for end in (0, 1):
         np.add.at(away, edges[:, end], np.cross(flat[edges[:, 1]] - flat[edges[:, 0]], axis))
+    for _ in range(SMOOTHING):
+        sums = away.copy()
+        for end in (0, 1):
+            np.add.at(sums, edges[:, end], away[edges[:, 1 - end]])
+        away = sums / 3.0
     away /= np.maximum(np.linalg.norm(away, axis=1), 1e-300)[:, None]
     normals = _seen_normals(mesh, region)
     lean, face = np.einsum("ij,ij->i", normals, away), normals @ axis
