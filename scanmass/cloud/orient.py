@@ -10,7 +10,7 @@ import numpy.typing as npt
 
 from scanmass.cloud.cloud import Cloud
 from scanmass.cloud.normals import RawNormals, raw_normals
-from scanmass.cloud.sides import ray_evidence, scanner_evidence, vote
+from scanmass.cloud.sides import Floor, ray_evidence, scanner_evidence, vote
 from scanmass.errors import Declined, Note
 from scanmass.progress import Progress, silent
 
@@ -47,12 +47,15 @@ class Oriented:
     warnings: tuple[Note, ...] = field(default=())
 
 
-def orient(cloud: Cloud, *, progress: Progress = silent) -> Oriented:
+def orient(cloud: Cloud, *, floor: Floor | None = None, progress: Progress = silent) -> Oriented:
     """The cloud with unit outward normals.
 
     Normals come from the neighbours of each sample; their side from the scanner's position where it is known, else
     from the file's own normals where the escape rays bear them out, else from the rays; then ten rounds of votes
     among 12 neighbours. Samples, their order and their views stay as they are.
+
+    ``floor`` (up, height): the plane the object stood on, {x: x.up = height}, where one is known. It keeps rays inside
+    the object from leaving through an underside that was not seen; a flat body with bores needs it.
 
     Raises
     ------
@@ -64,7 +67,7 @@ def orient(cloud: Cloud, *, progress: Progress = silent) -> Oriented:
     progress("normals", 0, 3)
     raw = raw_normals(cloud.points)
     progress("normals", 1, 3)
-    rays = _rays(cloud.points, raw)
+    rays = _rays(cloud.points, raw, floor)
     progress("normals", 2, 3)
     seen = scanner_evidence(cloud.points, raw.normals, cloud.scanners[cloud.view])
     known = np.isfinite(cloud.scanners).all(axis=1).reshape(-1)[cloud.view]
@@ -86,10 +89,10 @@ def orient(cloud: Cloud, *, progress: Progress = silent) -> Oriented:
     return Oriented(replace(cloud, normals=normals), method, undecided, raw.noise, warnings=tuple(notes))
 
 
-def _rays(points: FloatArray, raw: RawNormals) -> FloatArray:
+def _rays(points: FloatArray, raw: RawNormals, floor: Floor | None) -> FloatArray:
     asked = np.arange(0, len(points), _stride(points))
     evidence = np.zeros(len(points))
-    evidence[asked] = ray_evidence(points, raw, asked)
+    evidence[asked] = ray_evidence(points, raw, asked, floor)
     return evidence
 
 

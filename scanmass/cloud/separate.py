@@ -2,18 +2,18 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Literal
 
 import numpy as np
 import numpy.typing as npt
 
 from scanmass.cloud.cloud import Cloud, Removed
-from scanmass.cloud.normals import RawNormals, raw_normals
+from scanmass.cloud.normals import raw_normals
 from scanmass.cloud.pieces import sort_pieces
 from scanmass.cloud.support import Judged, judge_plane
 from scanmass.errors import Note, ScanFault
-from scanmass.geometry.neighbours import sample_areas
+from scanmass.geometry.neighbours import nearest, sample_areas
 from scanmass.geometry.planes import largest_plane
 from scanmass.progress import Progress, silent
 from scanmass.seeds import stream
@@ -21,6 +21,8 @@ from scanmass.seeds import stream
 FloatArray = npt.NDArray[np.float64]
 BoolArray = npt.NDArray[np.bool_]
 
+MOST_LOOKED_AT = 60_000
+"""Samples that planes are looked for in, evenly drawn from all."""
 CANDIDATES = 8
 """Planes looked at, the largest first."""
 LEAST_SHARE = 0.02
@@ -96,10 +98,13 @@ def _find_support(cloud: Cloud, up: FloatArray | None, seed: int) -> tuple[Judge
 
     Lowest among those that face the same way: the flange of a casting that stands on a table looks like a table too.
     """
+    # A plane shows in some of the samples as well as in all of them.
+    some = np.arange(0, len(cloud.points), -(-len(cloud.points) // MOST_LOOKED_AT))
+    whole, cloud = cloud, cloud.keep(np.isin(np.arange(len(cloud.points)), some))
     raw = raw_normals(cloud.points)
     areas = sample_areas(raw.distance[:, : min(8, raw.distance.shape[1])])
     areas = np.minimum(areas, 50.0 * np.median(areas))
-    cell = gap_cell(raw)
+    cell = gap_cell(raw.distance)
     # Samples are within four sigma of their plane; a floor also bends a little.
     tolerance = max(4.0 * raw.noise, 0.001 * cloud.size)
     rng = stream(seed, "support")
@@ -124,16 +129,25 @@ def _find_support(cloud: Cloud, up: FloatArray | None, seed: int) -> tuple[Judge
                 if judged.kind == "slab" and slab is None:
                     slab = judged
         left &= ~near
-    return best, slab
+    return None if best is None else _for_all(best, whole.points, cloud.points, tolerance), slab
+
+
+def _for_all(judged: Judged, points: FloatArray, looked_at: FloatArray, tolerance: float) -> Judged:
+    """The same, with what goes told for all points: those on the plane or under it whose nearest judged one goes."""
+    low = np.flatnonzero(points @ judged.up - judged.offset <= tolerance)
+    _, near = nearest(looked_at, 1, points[low])
+    remove = np.zeros(len(points), np.bool_)
+    remove[low] = judged.remove[near[:, 0]]
+    return replace(judged, remove=remove)
 
 
 def _is_lower(one: Judged, other: Judged) -> bool:
     return float(one.up @ other.up) > np.cos(np.radians(TILT)) and one.offset < other.offset
 
 
-def gap_cell(raw: RawNormals) -> float:
-    """Edge of the cells that pieces are joined over: three times the reach of eight neighbours on the sparse side."""
-    reach = raw.distance[:, min(8, raw.distance.shape[1]) - 1]
+def gap_cell(distance: FloatArray) -> float:
+    """Edge of the cells that pieces are joined over: twice the reach of eight neighbours on the sparse side."""
+    reach = distance[:, min(8, distance.shape[1]) - 1]
     return 2.0 * float(np.quantile(reach, 0.9))
 
 
@@ -163,8 +177,9 @@ def _without_clutter(cloud: Cloud, seed: int) -> tuple[Cloud, Removed, list[Note
             f"only {len(cloud.points)} points are left once the support is taken away",
             allowed="scan the object itself, or set clean.support to none",
         )
-    raw = raw_normals(cloud.points)
-    pieces = sort_pieces(cloud.points, gap_cell(raw), stream(seed, "pieces"))
+    asked = cloud.points[:: -(-len(cloud.points) // MOST_LOOKED_AT)]
+    distance, _ = nearest(cloud.points, 9, asked)
+    pieces = sort_pieces(cloud.points, gap_cell(distance[:, 1:]), stream(seed, "pieces"))
     if pieces.rivals:
         sizes = ", ".join(f"{1000 * s:.4g} mm" for s in (pieces.size, *pieces.rivals))
         raise ScanFault(

@@ -5,13 +5,17 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 from numba import njit
+from scipy.spatial import ConvexHull, QhullError
 
 from scanmass.cloud.normals import RawNormals
 from scanmass.geometry.occupancy import directions, escape_shares, facing_sheets, occupancy
+from scanmass.geometry.planes import plane_axes
 
 FloatArray = npt.NDArray[np.float64]
 IndexArray = npt.NDArray[np.int64]
 
+Floor = tuple[FloatArray, float]
+"""The plane an object stood on, {x: x.up = height}, as (up, height)."""
 RAYS = 48
 OFFSET = 2.5
 """Cells from a sample to where its rays start."""
@@ -33,7 +37,7 @@ def scanner_evidence(points: FloatArray, normals: FloatArray, scanners: FloatArr
     return evidence
 
 
-def ray_evidence(points: FloatArray, raw: RawNormals, asked: IndexArray) -> FloatArray:
+def ray_evidence(points: FloatArray, raw: RawNormals, asked: IndexArray, floor: Floor | None = None) -> FloatArray:
     """Evidence (m,) that the normals of the samples ``asked`` (m,) point outward, in [-1, 1], from escape rays.
 
     48 rays start 2.5 cells off the sample on either side and run through a grid of the surface's cells; the side
@@ -41,12 +45,14 @@ def ray_evidence(points: FloatArray, raw: RawNormals, asked: IndexArray) -> Floa
     of a thin wall) has no escape. Where neither side has any, as on the inner wall of a closed hollow body, the
     walls that rays pass are counted instead: an odd number leads out of material, an even one out of a cavity;
     not, though, where walls are thinner than the rays' offset, since two sheets in one cell count as one wall.
+    Where the object stood on a ``floor`` (up, height) a lid there closes its unseen underside, for the rays alone.
     """
     cell = max(
         1.6 * float(np.median(raw.distance[:, min(4, raw.distance.shape[1]) - 1])),
         float(np.ptp(points, axis=0).max()) / 200.0,
     )
-    grid = occupancy(points, cell)
+    walls = points if floor is None else np.concatenate([points, _lid(points, floor, 0.7 * cell)])
+    grid = occupancy(walls, cell)
     own = max(4.0 * raw.noise, 0.3 * cell)
     blocked = facing_sheets(grid, points, raw.normals, asked, own, OFFSET * cell) < np.inf
     free, odd = escape_shares(grid, points[asked], raw.normals[asked], directions(RAYS), OFFSET)
@@ -58,6 +64,23 @@ def ray_evidence(points: FloatArray, raw: RawNormals, asked: IndexArray) -> Floa
         parity = odd[:, 1] - odd[:, 0]
         evidence = np.where(closed & (np.abs(parity) > CLEAR), np.clip(parity, -1.0, 1.0), evidence)
     return np.asarray(evidence)
+
+
+def _lid(points: FloatArray, floor: Floor, step: float) -> FloatArray:
+    """Points on the floor, ``step`` apart, within the convex outline of the object seen from above."""
+    up, height = floor
+    axes = plane_axes(up)
+    flat = points @ axes.T
+    low = flat.min(axis=0)
+    counts = np.ceil(np.ptp(flat, axis=0) / step).astype(int) + 1
+    places = low + step * np.stack(np.meshgrid(*map(np.arange, counts), indexing="ij"), axis=-1).reshape(-1, 2)
+    try:
+        edges = ConvexHull(flat).equations
+    except QhullError:
+        return np.empty((0, 3))
+    inside = (places @ edges[:, :2].T + edges[:, 2]).max(axis=1) <= step
+    lid: FloatArray = places[inside] @ axes + height * up
+    return lid
 
 
 @njit(cache=True)

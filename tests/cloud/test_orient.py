@@ -7,8 +7,9 @@ import pytest
 
 from scanmass.cloud.normals import raw_normals
 from scanmass.cloud.orient import orient
+from scanmass.cloud.separate import separate
 from scanmass.errors import Declined
-from tests.cloud.bodies import body, cloud_of, sampled
+from tests.cloud.bodies import SHIFT, TURN, body, cloud_of, sampled, standing
 
 
 def right(oriented, normals) -> float:
@@ -43,6 +44,26 @@ def test_uneven_sampling():
     points, normals = sampled(body("casting"), 40_000)
     keep = (points[:, 0] > 0) | (np.random.default_rng(99).random(len(points)) < 0.04)
     assert right(orient(cloud_of(points[keep])), normals[keep]) > 0.98
+
+
+def test_a_floor_closes_an_unseen_underside():
+    scene, own = standing("casting", "floor", 40_000)
+    alone = separate(cloud_of(scene))
+    assert alone.up is not None
+    assert alone.contact_height is not None
+    assert own.any()
+    # Open below, rays from the bores' far side leave through the base: too many samples have no side, or the wrong one.
+    done = orient(alone.cloud, floor=(alone.up, alone.contact_height))
+    points = (done.cloud.points - SHIFT) @ TURN
+    assert done.cloud.normals is not None
+    normals = done.cloud.normals @ TURN
+    top = (points[:, 2] > 0.2) & (np.hypot(*points[:, :2].T) > 0.14)
+    bore = np.hypot(*points[:, :2].T) < 0.13
+    axis = np.hypot(*points[:, :2].T)[:, None]
+    inward = -np.einsum("ij,ij->i", normals[:, :2], points[:, :2] / axis)
+    assert np.mean(normals[top, 2] > -0.3) > 0.99
+    assert np.mean(inward[bore & (np.abs(normals[:, 2]) < 0.3)] > 0) > 0.97
+    assert done.undecided < 0.02
 
 
 def test_rotated_alike():

@@ -26,7 +26,7 @@ def test_an_own_face_is_never_removed(name, n):
 @pytest.mark.parametrize("on", ["floor", "table", "disc"])
 @pytest.mark.parametrize("name", BODIES)
 def test_a_support_goes_and_the_object_stays(name, on):
-    scene, own = standing(name, on, 8000 if on == "floor" else 16_000)
+    scene, own = standing(name, on, 5000 if on == "floor" else 16_000)
     done = separate(cloud_of(scene))
     kept = np.isin(scene[:, 0], done.cloud.points[:, 0])
     # What is lost of the object lies within four sigma (0.8 % of the size) of the support.
