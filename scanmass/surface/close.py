@@ -81,9 +81,12 @@ def close(
     inferred = inferred_faces(mesh, distance)
     require_all_round(mesh, inferred, up)
     progress("close", 1, 3)
-    regions = gaps(mesh, distance, pitch)
     notes: list[Note] = []
     base = standing_base(underside, hollow_depth, up, contact_height, cloud.points, float(np.median(pitch)), notes)
+    below = None
+    if underside != "seen" and base.up is not None and base.lowest is not None:
+        below = (mesh.vertices @ base.up < base.lowest - pitch) & (distance > 1.0)
+    regions = gaps(mesh, distance, pitch, below)
     progress("close", 2, 3)
     surface = close_gaps(mesh, regions, inferred, base, notes, "points", coarse_moments)
     progress("close", 3, 3)

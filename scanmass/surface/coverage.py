@@ -50,8 +50,11 @@ def inferred_faces(mesh: Mesh, distance: FloatArray) -> Mask:
     return inferred
 
 
-def gaps(mesh: Mesh, distance: FloatArray, pitch: FloatArray) -> list[Mask]:
-    """Regions the scan missed, widened, each a mask (m,) of faces with simple rims; small gaps are not among them."""
+def gaps(mesh: Mesh, distance: FloatArray, pitch: FloatArray, below: Mask | None = None) -> list[Mask]:
+    """Regions the scan missed, widened, each a mask (m,) of faces with simple rims; small gaps are not among them.
+
+    Vertices ``below`` (n,) what the object stands on were made by the reconstruction: gaps, however small.
+    """
     n = len(mesh.vertices)
     edges = half_edges(mesh.faces)
     length = np.linalg.norm(mesh.vertices[edges[:, 0]] - mesh.vertices[edges[:, 1]], axis=1)
@@ -61,7 +64,8 @@ def gaps(mesh: Mesh, distance: FloatArray, pitch: FloatArray) -> list[Mask]:
     _, label = connected_components(csr_matrix((np.ones(inside.sum()), edges[inside].T), shape=(n, n)), directed=False)
     deepest = np.zeros(label.max() + 1)
     np.maximum.at(deepest, label, distance)
-    seeds = np.flatnonzero(unseen & (deepest[label] > GAP))
+    missed = unseen & (deepest[label] > GAP)
+    seeds = np.flatnonzero(missed if below is None else missed | below)
     if len(seeds) == 0:
         return []
     # Each edge is there twice, once each way, with the same length; later duplicates must not add up.
