@@ -30,6 +30,15 @@ LEAST_SHARE = 0.02
 TILT = 15.0
 """Degrees between a declared up and the normal of a plane within which it can be the support."""
 WARN_CLUTTER = 0.05
+BASE_KEPT = Note(
+    "flat-base-kept",
+    "The object stands on a flat base that reaches beyond it. It may be its own foot or plinth, a turntable or a "
+    "board; it was kept and weighed with the object. If it is a turntable's disc, set clean.support to turntable; if "
+    "it is a board, crop the scan above it.",
+)
+
+
+Support = Literal["auto", "turntable", "none"]
 
 
 @dataclass(frozen=True)
@@ -51,7 +60,8 @@ class Separated:
 def separate(
     cloud: Cloud,
     *,
-    support: Literal["auto", "none"] = "auto",
+    support: Support = "auto",
+    clutter: Literal["auto", "none"] = "auto",
     up: FloatArray | None = None,
     seed: int = 0,
     progress: Progress = silent,
@@ -60,8 +70,10 @@ def separate(
 
     Parameters
     ----------
-    support : "auto" looks for a plane that goes on beyond the object's outline, or a turntable's disc; "none" takes
-        all planes for the object's own.
+    support : "auto" looks for the lowest plane that goes on beyond the object's outline, or a turntable's disc;
+        "turntable" takes away a disc that stands on that plane too (it could be a round foot of the object's own, so
+        this must be said); "none" takes all planes for the object's own.
+    clutter : "auto" takes away small pieces that lie apart from the object, "none" keeps them.
     up : (3,) declared direction, of any length; only planes within 15 degrees of level are then looked at.
 
     Raises
@@ -72,29 +84,29 @@ def separate(
     declared = None if up is None else np.asarray(up, np.float64) / np.linalg.norm(up)
     removed, notes, warnings = Removed.nothing(), list[Note](), list[Note]()
     contact: float | None = None
-    progress("separate", 0, 2)
-    if support == "auto":
-        found, slab = _find_support(cloud, declared, seed)
-        if slab is not None:
-            warnings.append(
-                Note(
-                    "flat-base-kept",
-                    "The object stands on a flat slab that may be a plinth of its own or a table; it was kept as part "
-                    "of the object. If it is a table, crop the scan above it.",
-                )
-            )
-        if found is not None:
-            cloud, removed, notes = _without_support(cloud, found)
+    looks = {"none": 0, "auto": 1, "turntable": 2}[support]
+    for look in range(max(looks, 1)):
+        found, base = _find_support(cloud, declared, seed) if look < looks else (None, None)
+        if found is not None and (look == 0 or found.kind == "turntable"):
+            cloud, taken, said = _without_support(cloud, found)
+            removed = removed.joined(taken)
+            (warnings if found.kind == "turntable" and support == "auto" else notes).append(said)
             contact = _contact(cloud, found, declared)
             declared = found.up if declared is None else declared
-    progress("separate", 1, 2)
-    cloud, away, said, warned = _without_clutter(cloud, seed)
-    progress("separate", 2, 2)
-    return Separated(cloud, removed.joined(away), declared, contact, (*notes, *said), (*warnings, *warned))
+        if base is not None and support == "auto":
+            warnings.append(BASE_KEPT)
+        # A disc shows as round only without the strays and the tools that lie about it.
+        if clutter == "auto":
+            cloud, away, also, warned = _without_clutter(cloud, seed)
+            removed, notes, warnings = removed.joined(away), [*notes, *also], [*warnings, *warned]
+        progress("separate", look + 1, max(looks, 1))
+        if found is None or found.kind == "turntable":
+            break
+    return Separated(cloud, removed, declared, contact, tuple(notes), tuple(warnings))
 
 
 def _find_support(cloud: Cloud, up: FloatArray | None, seed: int) -> tuple[Judged | None, Judged | None]:
-    """The lowest of the largest planes that is a support, and the first that may be one or the object's own slab.
+    """The lowest of the largest planes that is a support, and another above it that may be one or the object's own.
 
     Lowest among those that face the same way: the flange of a casting that stands on a table looks like a table too.
     """
@@ -125,8 +137,8 @@ def _find_support(cloud: Cloud, up: FloatArray | None, seed: int) -> tuple[Judge
             judged = judge_plane(cloud.points, raw.normals, areas, normal, offset, tolerance, cell)
             if up is None or judged.up @ up > 0:
                 if judged.kind in ("support plane", "turntable") and (best is None or _is_lower(judged, best)):
-                    best = judged
-                if judged.kind == "slab" and slab is None:
+                    best, judged = judged, best or judged
+                if judged is not best and judged.kind in ("slab", "turntable") and slab is None:
                     slab = judged
         left &= ~near
     return None if best is None else _for_all(best, whole.points, cloud.points, tolerance), slab
@@ -151,7 +163,7 @@ def gap_cell(distance: FloatArray) -> float:
     return 2.0 * float(np.quantile(reach, 0.9))
 
 
-def _without_support(cloud: Cloud, found: Judged) -> tuple[Cloud, Removed, list[Note]]:
+def _without_support(cloud: Cloud, found: Judged) -> tuple[Cloud, Removed, Note]:
     share = float(cloud.count[found.remove].sum() / cloud.count.sum())
     removed = Removed.from_cloud(cloud, found.remove, found.kind)
     what = "A round disc under the object" if found.kind == "turntable" else "A plane under the object"
@@ -159,7 +171,7 @@ def _without_support(cloud: Cloud, found: Judged) -> tuple[Cloud, Removed, list[
         f"{what} goes on beyond its outline and was taken for a {found.kind.split()[0]}: {share:.0%} of the points "
         "were removed. If it is part of the object, set clean.support to none."
     )
-    return cloud.keep(~found.remove), removed, [Note(f"{found.kind.split()[0]}-removed", text)]
+    return cloud.keep(~found.remove), removed, Note(f"{found.kind.split()[0]}-removed", text)
 
 
 def _contact(cloud: Cloud, found: Judged, declared: FloatArray | None) -> float:

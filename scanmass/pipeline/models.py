@@ -27,6 +27,7 @@ from scanmass.pipeline.models_read import OneOf, UnitName, Whole, Words, meant, 
 
 Frames = Literal["shared", "own"]
 Switch = Literal["auto", "none"]
+Support = Literal["auto", "turntable", "none"]
 UndersideWord = Literal["seen", "flat", "unknown"]
 UndersideKind = Literal["seen", "flat", "hollow", "unknown"]
 
@@ -111,9 +112,10 @@ class Scan(Block):
 class Clean(Block):
     """What is taken away before measuring. Every removed point is written out with its reason."""
 
-    support: Annotated[Switch, OneOf.of(Switch)] = Field(
+    support: Annotated[Support, OneOf.of(Support)] = Field(
         default="auto",
-        description="auto = find and remove table, floor or turntable; none = leave it.",
+        description="auto = find and remove table or floor, or a turntable; turntable = also the disc on a table; "
+        "none = leave all.",
         examples=["none"],
     )
     outliers: Annotated[Switch, OneOf.of(Switch)] = Field(

@@ -9,6 +9,7 @@ import numpy as np
 import numpy.typing as npt
 from scipy.spatial import cKDTree
 
+from scanmass.cloud.clean import drop_edges
 from scanmass.cloud.cloud import Cloud, Removed
 from scanmass.cloud.orient import orient
 from scanmass.cloud.outliers import outliers
@@ -79,19 +80,26 @@ def _of_points(scans: Sequence[Scan], settings: Pipeline, seed: int, progress: P
     declared = None if settings.scan.up is None else np.array(settings.scan.up)
     thinned = thin(scans, progress=progress)
     origin = 0.5 * (thinned.cloud.points.min(axis=0) + thinned.cloud.points.max(axis=0))
+    tidy = settings.clean.outliers
+    cloud, edges, notes = _moved(thinned.cloud, -origin), Removed.nothing(), thinned.warnings
+    if tidy == "auto":
+        cloud, edges, said = drop_edges(cloud)
+        notes += said
     found = separate(
-        _moved(thinned.cloud, -origin),
+        cloud,
         support=settings.clean.support,
+        clutter=tidy,
         up=declared,
         seed=seed,
         progress=progress,
     )
     cloud = _finer(scans, thinned, found, origin, progress)
-    removed, notes = found.removed, thinned.warnings + found.warnings
-    if settings.clean.outliers == "auto":
+    removed, notes = edges.joined(found.removed), notes + found.warnings
+    if tidy == "auto":
         cloud, strays, said = outliers(cloud)
         removed, notes = removed.joined(strays), notes + said
-    oriented = orient(cloud, progress=progress)
+    floor = None if found.up is None or found.contact_height is None else (found.up, found.contact_height)
+    oriented = orient(cloud, floor=floor, progress=progress)
     resolution = settings.surface.resolution
     surface = surface_from_cloud(
         oriented.cloud,

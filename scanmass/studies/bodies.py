@@ -93,7 +93,7 @@ def with_cavity(outer: Body, cavity: Body) -> Body:
 
 def solid_modeller() -> Any:
     """The library that joins and cuts solids, imported where it is first needed."""
-    import manifold3d  # type: ignore[import-not-found]
+    import manifold3d
 
     return manifold3d
 

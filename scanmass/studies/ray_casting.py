@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
+from scanmass import libraries
 from scanmass.studies.bodies import Body
 
 FloatArray = npt.NDArray[np.float64]
@@ -41,7 +42,7 @@ class Scene:
     """
 
     def __init__(self, bodies: Sequence[Body]) -> None:
-        import open3d as o3d
+        o3d = libraries.open3d()
 
         self.bodies = tuple(bodies)
         self._tree = o3d.t.geometry.RaycastingScene()
@@ -58,7 +59,7 @@ class Scene:
         The tree works in single precision and says which triangle was hit; the distance to that triangle's plane
         is then taken in double precision. One thread, so that the answer never depends on the machine's load.
         """
-        import open3d as o3d
+        o3d = libraries.open3d()
 
         rays = np.concatenate([origins, directions], axis=1).astype(np.float32)
         answer = self._tree.cast_rays(o3d.core.Tensor(rays), nthreads=1)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from scanmass import libraries
 from scanmass.errors import Note
 from scanmass.geometry.polyhedron import face_areas
 from scanmass.surface.surface import Surface
@@ -22,8 +23,7 @@ def wall_thicknesses(surface: Surface) -> tuple[np.ndarray, np.ndarray]:
 
     Infinite where the ray leaves through a face at an angle.
     """
-    import open3d
-
+    open3d = libraries.open3d()
     size = float(np.ptp(surface.vertices, axis=0).max())
     middle = surface.vertices.mean(axis=0)
     unit = (surface.vertices - middle) / size

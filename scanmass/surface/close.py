@@ -6,10 +6,12 @@ from dataclasses import dataclass
 from typing import Literal
 
 import numpy as np
+from scipy.spatial import cKDTree
 
 from scanmass.cloud.cloud import Cloud
 from scanmass.errors import Declined, Note
 from scanmass.geometry.edges import count_edges, shell_labels
+from scanmass.geometry.planes import plane_axes
 from scanmass.geometry.polyhedron import face_areas
 from scanmass.progress import Progress, silent
 from scanmass.surface.assemble import assembled, closures
@@ -26,6 +28,8 @@ FACING = 0.5
 """A gap is the underside's when its outward direction is within 60 degrees of straight down,"""
 STANDING = 0.25
 """... and its rim begins in the lowest quarter of the object."""
+COVERED = 0.3
+"""... and no more than this share of it has seen surface of the object below it."""
 LARGE_GAP = 0.05
 """A gap of more than this share of the area contradicts ``underside: seen``, and is warned about."""
 
@@ -35,7 +39,7 @@ class Base:
     """How the object stands and what is known of its underside.
 
     ``level`` is the height of the contact plane, ``lowest`` the height below which nothing is; ``samples`` (k, 3) are
-    the scan's, ``sampled`` false where they are a mesh's; ``supported``: a support gave the plane.
+    the scan's and ``pitch`` their spacing, 0 where they are a mesh's; ``supported``: a support gave the plane.
     """
 
     underside: Underside
@@ -44,7 +48,7 @@ class Base:
     level: float | None
     lowest: float | None
     samples: FloatArray
-    sampled: bool
+    pitch: float
     supported: bool = False
 
 
@@ -56,7 +60,6 @@ def close(
     hollow_depth: float | None = None,
     up: FloatArray | None = None,
     contact_height: float | None = None,
-    coarse_moments: FloatArray | None = None,
     progress: Progress = silent,
 ) -> Surface:
     """The reconstructed mesh with what no sample supports replaced by a declared or bracketed closure.
@@ -88,7 +91,7 @@ def close(
         below = (mesh.vertices @ base.up < base.lowest - pitch) & (distance > 1.0)
     regions = gaps(mesh, distance, pitch, below)
     progress("close", 2, 3)
-    surface = close_gaps(mesh, regions, inferred, base, notes, "points", coarse_moments)
+    surface = close_gaps(mesh, regions, inferred, base, notes, "points")
     progress("close", 3, 3)
     return surface
 
@@ -115,14 +118,14 @@ def standing_base(
 ) -> Base:
     """The contact plane: the support's where one was found, else from the lowest samples (and noted)."""
     if up is None:
-        return Base(underside, hollow_depth, None, None, None, points, pitch > 0.0)
+        return Base(underside, hollow_depth, None, None, None, points, pitch)
     heights = points @ up
     if contact_height is not None:
-        return Base(underside, hollow_depth, up, contact_height, contact_height, points, pitch > 0.0, True)
+        return Base(underside, hollow_depth, up, contact_height, contact_height, points, pitch, True)
     text = "the object is taken to stand on the plane through the lowest points of the scan (no support was found)"
     notes.append(Note("contact-at-lowest-point", text))
     level = lowest_level(heights) if pitch == 0.0 else standing_level(heights, pitch)
-    return Base(underside, hollow_depth, up, level, lowest_level(heights), points, pitch > 0.0)
+    return Base(underside, hollow_depth, up, level, lowest_level(heights), points, pitch)
 
 
 def close_gaps(
@@ -132,7 +135,6 @@ def close_gaps(
     base: Base,
     notes: list[Note],
     source: Literal["points", "mesh"],
-    coarse_moments: FloatArray | None,
 ) -> Surface:
     """The surface with every region closed, shared by reconstructed clouds and open meshes."""
     warnings = list(mesh.notes)
@@ -153,7 +155,6 @@ def close_gaps(
         underside=base.underside,
         shells=shell_labels(whole.faces)[0],
         closures=closures(mesh, spans),
-        coarse_moments=coarse_moments,
         assumptions=tuple(dict.fromkeys(notes)),
         warnings=tuple(dict.fromkeys(warnings)),
     )
@@ -192,6 +193,7 @@ def _standing(mesh: Mesh, regions: list[Mask], base: Base) -> list[bool]:
     if base.underside == "seen" or not regions:
         return [False] * len(regions)
     shadows = [outward(mesh, region) for region in regions]
+    seen = ~np.any(regions, axis=0)
     if base.up is None or base.level is None:
         largest = int(np.argmax([np.linalg.norm(shadow) for shadow in shadows]))
         return [k == largest for k in range(len(regions))]
@@ -202,18 +204,33 @@ def _standing(mesh: Mesh, regions: list[Mask], base: Base) -> list[bool]:
         _, rim = corners(mesh, region)
         begins = float(heights[rim].min(initial=np.inf))
         facing = abs(float(shadow @ base.up)) > FACING * float(np.linalg.norm(shadow))
-        found.append(bool(facing and begins < STANDING * tall))
+        low = facing and begins < STANDING * tall
+        found.append(bool(low and not _covered_below(mesh, region, base.up, seen)))
     return found
+
+
+def _covered_below(mesh: Mesh, region: Mask, up: FloatArray, seen: Mask) -> bool:
+    """Whether the object itself was seen under a gap, as a plinth under a belly: then the gap is no underside."""
+    flat = plane_axes(up)
+    middles = mesh.vertices[mesh.faces].mean(axis=1)
+    _, normals = face_areas(mesh.vertices, mesh.faces)
+    top = seen & (normals @ up > 0)
+    if not top.any():
+        return False
+    spread = membrane(mesh, region)[mesh.faces[region]].mean(axis=1)
+    distance, nearest = cKDTree(middles[top] @ flat.T).query(spread @ flat.T)
+    under = (distance < mesh.resolution) & (middles[top][nearest] @ up < spread @ up - 2.0 * mesh.resolution)
+    return bool(np.mean(under) > COVERED)
 
 
 def _underside(mesh: Mesh, region: Mask, base: Base, notes: list[Note]) -> Span:
     up, level, lowest = base.up, base.level, base.lowest
     if up is None or level is None or lowest is None:
-        up, level = _resting_plane(mesh, region, base.samples)
-        lowest = level
+        up, lowest = _resting_plane(mesh, region, base.samples)
+        level = standing_level(base.samples @ up, base.pitch) if base.pitch > 0.0 else lowest
         text = "up is not known: the largest unseen part is taken for the underside, on a plane that touches all points"
         notes.append(Note("underside-from-gap", text))
-    near = low_membrane(mesh, region, up, lowest, base.samples if base.sampled else None)
+    near = low_membrane(mesh, region, up, level, base.samples, base.pitch)
     if base.underside == "flat":
         return Span(region, near, floor(mesh, region, up, level, inward=True), 1.0, False, "underside")
     if base.underside == "hollow":

@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from scanmass.cloud.cloud import Cloud
+from scanmass.geometry.polyhedron import polyhedron_moments
 from scanmass.progress import Progress, silent
 from scanmass.surface.check import thin_walls
 from scanmass.surface.close import close
@@ -24,14 +27,17 @@ def surface_from_cloud(
 ) -> Surface:
     """Reconstruct, refine, close and check; see each for what it does, needs and raises."""
     coarse = reconstruct(cloud, resolution=resolution, progress=progress)
+    refined = refine(coarse, cloud, progress=progress)
     surface = close(
-        refine(coarse, cloud, progress=progress),
+        refined,
         cloud,
         underside=underside,
         hollow_depth=hollow_depth,
         up=up,
         contact_height=contact_height,
-        coarse_moments=coarse.moments,
         progress=progress,
     )
+    # What refinement changed of the seen surface, apart from what closing put in place of the unseen.
+    unrefined = polyhedron_moments(surface.vertices, surface.faces) - (refined.moments - coarse.moments)
+    surface = replace(surface, coarse_moments=unrefined)
     return surface.noted(warnings=thin_walls(surface))

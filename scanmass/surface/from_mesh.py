@@ -11,11 +11,10 @@ from scanmass.geometry.polyhedron import face_areas
 from scanmass.progress import Progress, silent
 from scanmass.seeds import stream
 from scanmass.surface.cap import capped
-from scanmass.surface.close import close, close_gaps, require_declared, standing_base
+from scanmass.surface.close import close_gaps, require_declared, standing_base
+from scanmass.surface.from_cloud import surface_from_cloud
 from scanmass.surface.mesh import FaceArray, FloatArray, Mesh
 from scanmass.surface.onesided import require_all_round
-from scanmass.surface.reconstruct import reconstruct
-from scanmass.surface.refine import refine
 from scanmass.surface.sampling import median_pitch
 from scanmass.surface.shells import settled
 from scanmass.surface.surface import Surface, Underside
@@ -149,7 +148,7 @@ def _completed(
     notes.append(Note("rims-filled", f"the mesh is open: {len(loops)} rim(s) were filled"))
     require_all_round(whole, inferred, up)
     base = standing_base(underside, hollow_depth, up, level, mesh.vertices, 0.0, notes)
-    return close_gaps(whole, regions, inferred, base, notes, "mesh", None)
+    return close_gaps(whole, regions, inferred, base, notes, "mesh")
 
 
 def _without_flecks(mesh: Mesh, notes: list[Note]) -> Mesh:
@@ -181,13 +180,9 @@ def _resampled(
         f"the mesh cannot be closed as it is ({edges.open} open edges, {edges.crowded} with three faces or more): it "
         f"was sampled with {SAMPLES} points and reconstructed"
     )
-    cloud = _sampled(mesh)
-    coarse = reconstruct(cloud, progress=progress)
-    fine = refine(coarse, cloud, progress=progress)
-    surface = close(
-        fine, cloud, underside=underside, hollow_depth=hollow_depth, up=up, contact_height=level,
-        coarse_moments=coarse.moments, progress=progress,
-    )  # fmt: skip
+    surface = surface_from_cloud(
+        _sampled(mesh), underside=underside, hollow_depth=hollow_depth, up=up, contact_height=level, progress=progress
+    )
     return surface.noted(assumptions=(*notes, Note("mesh-resampled", text)))
 
 

@@ -1,4 +1,4 @@
-"""Silence for libraries that print from C++ to the process's standard output."""
+"""Silence for libraries that print from C++ to the process's own streams."""
 
 from __future__ import annotations
 
@@ -10,18 +10,29 @@ from contextlib import contextmanager
 
 @contextmanager
 def quiet() -> Iterator[None]:
-    """Send file descriptor 1 to nowhere while the block runs: results alone go to stdout."""
+    """Send file descriptors 1 and 2 to nowhere while the block runs.
+
+    Reconstruction prints thousands of lines of its own to both. Keep only the call itself in the block: a fault
+    raised in it is an exception, and is told as any other.
+    """
     sys.stdout.flush()
-    try:
-        kept = os.dup(1)
-    except OSError:  # the process was started without a standard output
-        yield
-        return
+    sys.stderr.flush()
+    kept = {number: copy for number in (1, 2) if (copy := _copy(number)) is not None}
     nowhere = os.open(os.devnull, os.O_WRONLY)
     try:
-        os.dup2(nowhere, 1)
+        for number in kept:
+            os.dup2(nowhere, number)
         yield
     finally:
-        os.dup2(kept, 1)
-        os.close(kept)
+        for number, copy in kept.items():
+            os.dup2(copy, number)
+            os.close(copy)
         os.close(nowhere)
+
+
+def _copy(number: int) -> int | None:
+    """A copy of a descriptor, or None where the process was started without it."""
+    try:
+        return os.dup(number)
+    except OSError:
+        return None

@@ -16,7 +16,10 @@ ROUNDS = 3
 REACH = 3.0
 """Samples farther than so many grid cells from the surface do not pull at it."""
 LEAST_POINTS = 3.0
-"""A vertex moves where at least so many samples lie on the triangles round it and its neighbours."""
+"""A vertex moves by the mean over so many samples or more: those of its neighbours, or where samples are fewer than
+vertices of wider rings."""
+RINGS = 6
+"""... but of no more than so many rings."""
 
 
 def refine(mesh: Mesh, cloud: Cloud, *, rounds: int = ROUNDS, progress: Progress = silent) -> Mesh:
@@ -24,7 +27,8 @@ def refine(mesh: Mesh, cloud: Cloud, *, rounds: int = ROUNDS, progress: Progress
 
     Each sample's distance to the nearest triangle is shared among that triangle's corners by barycentric weights
     (times the scan points behind the sample); a vertex moves along its normal by the weighted mean over itself and
-    its neighbours. Residuals to the surface, not to a tangent plane, so curvature makes no bias. Vertices without
+    its neighbours, and where samples are sparse over wider rings, so that the surface does not stay behind between
+    them. Residuals to the surface, not to a tangent plane, so curvature makes no bias. Vertices without
     samples near stay.
     """
     middle = cloud.points.mean(axis=0)
@@ -40,11 +44,26 @@ def refine(mesh: Mesh, cloud: Cloud, *, rounds: int = ROUNDS, progress: Progress
         pull, total, seen = _pulls(
             points, weight, owner, vertices, normals, mesh.faces, start, fan, REACH * mesh.resolution
         )
-        pull, total, seen = ring @ pull, ring @ total, ring @ seen
-        move = np.where(seen >= LEAST_POINTS, pull / np.where(total > 0, total, 1.0), 0.0)
+        move = _means(ring, pull, total, seen)
         vertices = vertices + np.clip(move, -mesh.resolution, mesh.resolution)[:, None] * normals
     progress("refine", rounds, rounds)
     return mesh.moved(vertices + middle)
+
+
+def _means(ring: csr_matrix, pull: FloatArray, total: FloatArray, seen: FloatArray) -> FloatArray:
+    """Mean pull (n,) on each vertex over the smallest patch round it that holds enough samples; 0 where none does."""
+    degree = np.asarray(ring.sum(axis=1)).ravel()
+    mean = np.zeros(len(pull))
+    settled = np.zeros(len(pull), np.bool_)
+    for rings in range(1, RINGS + 1):
+        pull, total, seen = (ring @ share / degree for share in (pull, total, seen))
+        # A patch of k rings holds some 1 + 3 k (k + 1) vertices.
+        enough = ~settled & (seen * (1 + 3 * rings * (rings + 1)) >= LEAST_POINTS)
+        mean[enough] = pull[enough] / total[enough]
+        settled |= enough
+        if settled.all():
+            break
+    return mean
 
 
 def vertex_normals(vertices: FloatArray, faces: FaceArray) -> FloatArray:

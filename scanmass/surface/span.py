@@ -25,6 +25,8 @@ LEVELLED = 0.5
 SMOOTHING = 5
 CONVERGING = 0.3
 STEEPEST_CONE = 2.0
+UNSURE_END = 0.5
+"""Where samples end is known to so many pitches."""
 NEAR_RIM = 6.0
 """Samples within so many grid cells of a rim vertex belong to the wall below it."""
 
@@ -61,19 +63,21 @@ def membrane(mesh: Mesh, region: Mask) -> FloatArray:
     return harmonic(mesh.faces[region], mesh.vertices, rim)
 
 
-def low_membrane(mesh: Mesh, region: Mask, up: FloatArray, lowest: float, samples: FloatArray | None) -> FloatArray:
+def low_membrane(
+    mesh: Mesh, region: Mask, up: FloatArray, level: float, samples: FloatArray, pitch: float
+) -> FloatArray:
     """A membrane under which nothing was seen: its rim goes down the walls as far as samples (k, 3) do.
 
-    The region was widened past the edge of the data; ``samples`` near the rim tell how far down it reaches. A mesh's
-    own rim (``samples`` None) stays where it is. Nowhere below the plane ``up . r = lowest``.
+    The region was widened past the edge of the data; ``samples`` (k, 3) near the rim tell how far down it reaches, to
+    half a ``pitch`` of theirs. A mesh's own rim (``pitch`` 0) stays where it is. Nowhere below ``up . r = level``.
     """
     inside, rim = corners(mesh, region)
     ends = mesh.vertices @ up
-    if samples is not None:
-        ends[rim] = _data_ends(mesh, region, rim, up, samples)
-    result = _dropped(mesh, region, up, np.maximum(ends, np.minimum(lowest, mesh.vertices @ up)), inward=True)
+    if pitch > 0.0:
+        ends[rim] = np.minimum(ends[rim], _data_ends(mesh, region, rim, up, samples) + UNSURE_END * pitch)
+    result = _dropped(mesh, region, up, np.maximum(ends, np.minimum(level, mesh.vertices @ up)), inward=True)
     inner = inside & ~rim
-    result[inner] += np.maximum(lowest - result[inner] @ up, 0.0)[:, None] * up
+    result[inner] += np.maximum(level - result[inner] @ up, 0.0)[:, None] * up
     return result
 
 

@@ -96,15 +96,29 @@ def bound(
     patched = patches.make(surface, cloud, centre=centre, count=_patch_count(cloud))
     model = _noise(surface, cloud, patched, wanted, coarse, level)
     shapes = {"": parts} | {c.name: _closed(parts, translated(c.moments, -centre)) for c in surface.closures}
-    terms = _terms(surface, patched, model, wanted, parts, centre)
-    draws: dict[str, Replicates] = {}
-    figures: dict[str, ShapeFigures] = {}
-    for name, shape in shapes.items():
-        if model.basis == "none":
-            figures[name] = bare_figures(shape, centre, level)
-            continue
-        draws[name] = replicates(shape, terms, wanted.scale, centre=centre, n=replicate_count, seed=seed)
-        figures[name] = shape_figures(shape, terms, wanted.scale, draws[name], centre=centre, level=level)
+
+    def carried(by: NoiseModel) -> tuple[tuple[Term, ...], dict[str, Replicates], dict[str, ShapeFigures]]:
+        terms = _terms(surface, patched, by, wanted, parts, centre)
+        if by.basis == "none":
+            return terms, {}, {name: bare_figures(shape, centre, level) for name, shape in shapes.items()}
+        draws = {
+            name: replicates(shape, terms, wanted.scale, centre=centre, n=replicate_count, seed=seed)
+            for name, shape in shapes.items()
+        }
+        figures = {
+            name: shape_figures(shape, terms, wanted.scale, draws[name], centre=centre, level=level)
+            for name, shape in shapes.items()
+        }
+        return terms, draws, figures
+
+    try:
+        terms, draws, figures = carried(model)
+    except Declined:
+        # An upper bound as wide as the object says nothing: no bound is claimed then. A declared noise is a fault.
+        if model.basis != "upper_bound":
+            raise
+        model = unknown(patched)
+        terms, draws, figures = carried(model)
     first, redrawn = figures[""], max((d.redrawn for d in draws.values()), default=0.0)
     covariance = None if first.com.std is None else _covariance(first)
     return Bounds(

@@ -81,7 +81,7 @@ VALUES = {
     'points: {lug: 1 2 3 mm,\n "lug ": 4 5 6 mm}': "1: points: two points are called 'lug'; "
     "give each point a name of its own",
     "points: [lug]": "1: points: a list; write it as in points: {left wing tip: 120 0 300 mm}",
-    "clean:\n  support: no": "2: clean.support: 'no', did you mean 'none'?; allowed: auto | none",
+    "clean:\n  support: no": "2: clean.support: 'no', did you mean 'none'?; allowed: auto | turntable | none",
     "clean:\n  outliers: True": "2: clean.outliers: 'True', did you mean 'auto'?; allowed: auto | none",
     "surface: {resolution: 2}": f"1: surface.resolution: '2': no unit is given; {LENGTHS}",
     "surface: {resolution: atuo}": "1: surface.resolution: 'atuo', did you mean 'auto'?; "
