@@ -18,14 +18,14 @@ from scanmass.surface.sampling import local_pitch
 
 Mask = npt.NDArray[np.bool_]
 
-NEAR = 3.0
+NEAR = 2.0
 """A vertex with no sample within so many local pitches was not seen (an even random sampling leaves such a gap
 once in 2e12 places; the nearest-neighbour distance is about half a pitch, so this is some six of those)."""
-GAP = 5.0
+GAP = 2.5
 """A gap whose middle is no farther than this from a sample is bridged well by the reconstruction: left as it is."""
-WIDEN = 3.0
+WIDEN = 2.0
 """Gaps are widened by so many pitches along the surface: back past the edge of the data, where it still is data. More
-loses data near the floor (6 made a stone 4 % too large, its walls drawn on from too high up), less leaves the balloon."""
+loses data near the floor (6 made a stone 4 % too large, its walls drawn on from too high up), less leaves balloon."""
 BEYOND, SMOOTHING = 3.0, 4
 """Paths along edges are longer the one way than the other: distances are known to so many pitches beyond, and averaged
 over neighbours so often, or the rim is ragged."""
