@@ -9,6 +9,7 @@ from scipy.sparse import csr_matrix
 from scanmass.cloud.cloud import Cloud
 from scanmass.geometry.edges import half_edges
 from scanmass.geometry.neighbours import nearest
+from scanmass.geometry.triangles import between, closest, dot, mixed, row
 from scanmass.progress import Progress, silent
 from scanmass.surface.mesh import FaceArray, FloatArray, Mesh
 
@@ -97,84 +98,28 @@ def _ring(faces: FaceArray, n: int) -> csr_matrix:
 
 
 @njit(cache=True)
-def _dot(a, b):  # type: ignore[no-untyped-def]
-    return a[0] * b[0] + a[1] * b[1] + a[2] * b[2]
-
-
-@njit(cache=True)
-def _between(a, b):  # type: ignore[no-untyped-def]
-    return b[0] - a[0], b[1] - a[1], b[2] - a[2]
-
-
-@njit(cache=True)
-def _row(array, k):  # type: ignore[no-untyped-def]
-    # Tuples stay in registers; rows of arrays, a hundred a sample, made this ten times slower.
-    return array[k, 0], array[k, 1], array[k, 2]
-
-
-@njit(cache=True)
-def _mixed(weights, a, b, c):  # type: ignore[no-untyped-def]
-    u, v, w = weights
-    return u * a[0] + v * b[0] + w * c[0], u * a[1] + v * b[1] + w * c[1], u * a[2] + v * b[2] + w * c[2]
-
-
-@njit(cache=True)
-def _closest(p, a, b, c):  # type: ignore[no-untyped-def]
-    """Barycentric weights of the point of triangle a, b, c that is nearest to p (by the regions of its plane)."""
-    ab, ac, ap = _between(a, b), _between(a, c), _between(a, p)
-    d1, d2 = _dot(ab, ap), _dot(ac, ap)
-    if d1 <= 0.0 and d2 <= 0.0:
-        return 1.0, 0.0, 0.0
-    bp = _between(b, p)
-    d3, d4 = _dot(ab, bp), _dot(ac, bp)
-    if d3 >= 0.0 and d4 <= d3:
-        return 0.0, 1.0, 0.0
-    vc = d1 * d4 - d3 * d2
-    if vc <= 0.0 and d1 >= 0.0 and d3 <= 0.0:
-        t = d1 / (d1 - d3) if d1 > d3 else 0.0
-        return 1.0 - t, t, 0.0
-    cp = _between(c, p)
-    d5, d6 = _dot(ab, cp), _dot(ac, cp)
-    if d6 >= 0.0 and d5 <= d6:
-        return 0.0, 0.0, 1.0
-    vb = d5 * d2 - d1 * d6
-    if vb <= 0.0 and d2 >= 0.0 and d6 <= 0.0:
-        t = d2 / (d2 - d6) if d2 > d6 else 0.0
-        return 1.0 - t, 0.0, t
-    va = d3 * d6 - d5 * d4
-    if va <= 0.0 and d4 - d3 >= 0.0 and d5 - d6 >= 0.0:
-        span = (d4 - d3) + (d5 - d6)
-        t = (d4 - d3) / span if span > 0.0 else 0.0
-        return 0.0, 1.0 - t, t
-    total = va + vb + vc
-    if total <= 0.0:
-        return 1.0, 0.0, 0.0
-    return va / total, vb / total, vc / total
-
-
-@njit(cache=True)
 def _pulls(points, weight, owner, vertices, normals, faces, start, fan, reach):  # type: ignore[no-untyped-def]
     n = len(vertices)
     pull, total, seen = np.zeros(n), np.zeros(n), np.zeros(n)
     for k in range(len(points)):
-        p = _row(points, k)
+        p = row(points, k)
         best, face, shares, away = np.inf, -1, (0.0, 0.0, 0.0), (0.0, 0.0, 0.0)
         for j in range(start[owner[k]], start[owner[k] + 1]):
-            f = _row(faces, fan[j])
-            a, b, c = _row(vertices, f[0]), _row(vertices, f[1]), _row(vertices, f[2])
-            weights = _closest(p, a, b, c)
-            d = _between(_mixed(weights, a, b, c), p)
-            distance = _dot(d, d)
+            f = row(faces, fan[j])
+            a, b, c = row(vertices, f[0]), row(vertices, f[1]), row(vertices, f[2])
+            weights = closest(p, a, b, c)
+            d = between(mixed(weights, a, b, c), p)
+            distance = dot(d, d)
             if distance < best:
                 best, face, shares, away = distance, fan[j], weights, d
         if face < 0 or best > reach * reach:
             continue
-        f = _row(faces, face)
-        up = _mixed(shares, _row(normals, f[0]), _row(normals, f[1]), _row(normals, f[2]))
-        length = np.sqrt(_dot(up, up))
+        f = row(faces, face)
+        up = mixed(shares, row(normals, f[0]), row(normals, f[1]), row(normals, f[2]))
+        length = np.sqrt(dot(up, up))
         if length == 0.0:
             continue
-        residual = _dot(away, up) / length
+        residual = dot(away, up) / length
         for i in range(3):
             pull[f[i]] += shares[i] * weight[k] * residual
             total[f[i]] += shares[i] * weight[k]

@@ -8,6 +8,7 @@ from numba import njit
 from scipy.spatial import cKDTree
 
 from scanmass.geometry.polyhedron import face_areas
+from scanmass.geometry.triangles import between, closest, dot, mixed, row
 
 FloatArray = npt.NDArray[np.float64]
 IndexArray = npt.NDArray[np.int64]
@@ -50,58 +51,20 @@ def farthest_seeds(features: FloatArray, count: int) -> IndexArray:
 
 
 @njit(cache=True)
-def _towards_triangle(p, a, b, c, out):  # type: ignore[no-untyped-def]
-    """Vector from the nearest point of triangle abc to p, by the region p projects to (vertex, edge or inside)."""
-    d1 = d2 = d3 = d4 = d5 = d6 = 0.0
-    for k in range(3):
-        ab, ac = b[k] - a[k], c[k] - a[k]
-        d1 += ab * (p[k] - a[k])
-        d2 += ac * (p[k] - a[k])
-        d3 += ab * (p[k] - b[k])
-        d4 += ac * (p[k] - b[k])
-        d5 += ab * (p[k] - c[k])
-        d6 += ac * (p[k] - c[k])
-    vc, vb, va = d1 * d4 - d3 * d2, d5 * d2 - d1 * d6, d3 * d6 - d5 * d4
-    v = w = 0.0
-    if d1 <= 0.0 and d2 <= 0.0:
-        pass
-    elif d3 >= 0.0 and d4 <= d3:
-        v = 1.0
-    elif d6 >= 0.0 and d5 <= d6:
-        w = 1.0
-    elif vc <= 0.0 and d1 >= 0.0 and d3 <= 0.0:
-        v = d1 / (d1 - d3)
-    elif vb <= 0.0 and d2 >= 0.0 and d6 <= 0.0:
-        w = d2 / (d2 - d6)
-    elif va <= 0.0 and d4 - d3 >= 0.0 and d5 - d6 >= 0.0:
-        w = (d4 - d3) / ((d4 - d3) + (d5 - d6))
-        v = 1.0 - w
-    elif va + vb + vc > 0.0:
-        v, w = vb / (va + vb + vc), vc / (va + vb + vc)
-    square = 0.0
-    for k in range(3):
-        out[k] = p[k] - (a[k] + v * (b[k] - a[k]) + w * (c[k] - a[k]))
-        square += out[k] * out[k]
-    return square
-
-
-@njit(cache=True)
 def _nearest_of(points, candidates, vertices, faces, normals):  # type: ignore[no-untyped-def]
     n = points.shape[0]
     signed = np.zeros(n)
     chosen = np.full(n, -1, np.int64)
-    towards = np.zeros(3)
     for i in range(n):
+        p = row(points, i)
         best, value = np.inf, 0.0
         for f in candidates[i]:
             if f < 0:
                 continue
-            square = _towards_triangle(
-                points[i], vertices[faces[f, 0]], vertices[faces[f, 1]], vertices[faces[f, 2]], towards
-            )
-            along = 0.0
-            for k in range(3):
-                along += towards[k] * normals[f, k]
+            a, b, c = row(vertices, faces[f, 0]), row(vertices, faces[f, 1]), row(vertices, faces[f, 2])
+            away = between(mixed(closest(p, a, b, c), a, b, c), p)
+            square = dot(away, away)
+            along = dot(away, row(normals, f))
             # Faces that share the nearest edge tie: the one the point faces most squarely tells the side.
             tied = square <= best * (1 + 1e-9) and square >= best * (1 - 1e-9)
             if square < best * (1 - 1e-9) or (tied and abs(along) > abs(value)):
