@@ -9,7 +9,7 @@ import numpy as np
 
 from scanmass.errors import Note, ScanFault
 from scanmass.scans.scan import Scan
-from scanmass.scans.survey import COARSE, Survey, is_closed
+from scanmass.scans.survey import COARSE, TOO_COARSE, Survey, is_closed
 
 LEAST_POINTS = 500
 LEAST_SIZE, GREATEST_SIZE = 1e-3, 1e3
@@ -33,6 +33,8 @@ def admit(scans: Sequence[Scan], surveys: Sequence[Survey], metres_per_unit: Seq
         under 1 mm or over 1 km.
     """
     counted = tuple(_counted(scan, seen) for scan, seen in zip(scans, surveys, strict=True))
+    for scan, seen, metres in zip(counted, surveys, metres_per_unit, strict=True):
+        _check_steps(scan, seen, metres)
     _check_number(counted, surveys)
     for scan, seen, metres in zip(counted, surveys, metres_per_unit, strict=True):
         _check_size(scan, seen, metres)
@@ -65,7 +67,8 @@ def _check_number(scans: Sequence[Scan], surveys: Sequence[Survey]) -> None:
         return
     files = scans[0].file if len(scans) == 1 else None
     allowed = f"at least {LEAST_POINTS} are needed, unless it is a closed mesh"
-    raise ScanFault(f"the scan holds {usable} usable points", file=files, allowed=allowed)
+    where = " in an open mesh" if any(scan.faces is not None for scan in scans) else ""
+    raise ScanFault(f"the scan holds {usable} usable points{where}", file=files, allowed=allowed)
 
 
 def _check_size(scan: Scan, seen: Survey, metres: float) -> None:
@@ -76,11 +79,12 @@ def _check_size(scan: Scan, seen: Survey, metres: float) -> None:
     size = seen.size * metres
     if not LEAST_SIZE <= size <= GREATEST_SIZE:
         side = "under 1 mm" if size < LEAST_SIZE else "over 1 km"
-        raise ScanFault(
-            f"the largest side is {length(size)}, {side}, so the unit is probably wrong",
-            file=scan.file,
-            allowed=f"the same numbers are {as_units(seen.size)}",
-        )
+        if any(LEAST_SIZE <= seen.size * unit <= GREATEST_SIZE for _, unit in ALTERNATIVES):
+            cause, allowed = "the unit is probably wrong", f"the same numbers are {as_units(seen.size)}"
+        else:
+            cause = "the file is probably corrupt, or a point of it lies far astray"
+            allowed = "export it again; no unit that is read here makes sense of it"
+        raise ScanFault(f"the largest side is {length(size)}, {side}, so {cause}", file=scan.file, allowed=allowed)
 
 
 def as_units(size: float, units: Sequence[tuple[str, float]] = ALTERNATIVES) -> str:
@@ -116,6 +120,17 @@ def _together_flat(scans: Sequence[Scan]) -> bool:
     points = points - points.mean(axis=0)
     spreads = np.sqrt(np.maximum(np.linalg.eigvalsh(points.T @ points), 0.0))
     return bool(spreads[0] <= FLAT * spreads[2])
+
+
+def _check_steps(scan: Scan, seen: Survey, metres: float) -> None:
+    """Refuse coordinates so rounded that no shape is left, before the points that fell together are counted."""
+    if seen.size > 0 and seen.step > TOO_COARSE * seen.size:
+        raise ScanFault(
+            f"the coordinates lie so far from the origin that they are stored in steps of {length(seen.step * metres)}"
+            f", where the largest side is {length(seen.size * metres)}",
+            file=scan.file,
+            allowed="export them nearer to the origin or in double precision",
+        )
 
 
 def _coarse(scan: Scan, seen: Survey, metres: float) -> tuple[Note, ...]:

@@ -51,6 +51,8 @@ def load(
         progress("read", len(surveys), len(paths))
         surveys.append(seen)
     progress("read", len(paths), len(paths))
+    if len(scans) > 1:
+        scans = [_as_points(scan) for scan in scans]
     known = [_with_unit(scan, seen, declared) for scan, seen in zip(scans, surveys, strict=True)]
     metres = [1.0 if scan.file_unit is None else metres_per(scan.file_unit) for scan in known]
     return tuple(
@@ -79,6 +81,14 @@ def _refuse_twin(scan: Scan, before: Sequence[Scan]) -> None:
         if other.sha256 == scan.sha256:
             seen = "this is the same file twice" if other.file == scan.file else f"this holds the same as {other.file}"
             raise ScanFault(seen, file=scan.file, allowed="name each view once: twice would make it look more certain")
+
+
+def _as_points(scan: Scan) -> Scan:
+    """A warning where a mesh is one of several views: only its corners are measured."""
+    if scan.faces is None:
+        return scan
+    text = f"{scan.file}: a mesh among several scans: its corners are used as points, its faces are not."
+    return replace(scan, warnings=(*scan.warnings, Note("mesh-as-points", text)))
 
 
 def _with_unit(scan: Scan, seen: Survey, declared: str | None) -> Scan:

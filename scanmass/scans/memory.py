@@ -33,6 +33,11 @@ def mesh_scan(
     """
     if len(points) == 0:
         raise ScanFault("the file holds no points", file=path, allowed="at least 500 are needed")
+    if len(faces) == 0:
+        text = (
+            f"{path.name}: the file holds points and no faces; it is measured as a cloud. If it was a mesh, it is cut."
+        )
+        warnings = (*warnings, Note("no-faces", text))
 
     def blocks() -> list[Block]:
         parts = [slice(start, start + BLOCK_POINTS) for start in range(0, len(points), BLOCK_POINTS)]

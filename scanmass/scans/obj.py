@@ -14,8 +14,11 @@ from scanmass.scans.memory import mesh_scan
 from scanmass.scans.numbers import Columns, FloatArray, parse_lines, shown
 from scanmass.scans.polygons import check_range, fanned
 from scanmass.scans.scan import Scan
+from scanmass.scans.wording import CUT
 
 IntArray = npt.NDArray[np.int64]
+MOST_LOOSE = 0.01
+"""Share of points without a face that a whole file may hold."""
 
 
 def read_obj(path: Path) -> Scan:
@@ -33,6 +36,8 @@ def read_obj(path: Path) -> Scan:
         raise ScanFault("the file is no plain text", file=path, allowed="an OBJ file is text: the name may be wrong")
     lines = text.replace(b"\r\n", b"\n").replace(b"\r", b"\n").replace(b"\\\n", b" ").split(b"\n")
     lines = [line.strip() for line in lines]
+    if b"v" in lines or b"f" in lines:
+        raise ScanFault("a point or a face is begun and left empty", file=path, allowed=CUT)
     rows = _numbers(lines, b"v", path)
     if len(rows) == 0:
         raise ScanFault("the file holds no line of a point", file=path, allowed="a point is written: v x y z")
@@ -40,6 +45,7 @@ def read_obj(path: Path) -> Scan:
     colours = eight_bit(rows[:, -3:], 1.0 if rows[:, -3:].max() <= 1.0 else 255.0) if rows.shape[1] >= 6 else None
     corners, counts = _faces(lines, len(points), path)
     triangles = fanned(corners, counts, len(points), path.name)
+    _refuse_cut(text, triangles.faces, len(points), path)
     normals = None
     if len(triangles.faces) == 0:
         found = _numbers(lines, b"vn", path)
@@ -47,6 +53,14 @@ def read_obj(path: Path) -> Scan:
     return mesh_scan(
         path, "obj", points, triangles.faces, normals=normals, colours=colours, assumptions=triangles.assumptions
     )
+
+
+def _refuse_cut(text: bytes, faces: IntArray, points: int, path: Path) -> None:
+    """OBJ counts nothing, so a cut shows only in what is left: a last line that does not end, and points not used."""
+    loose = points - len(np.unique(faces))
+    if len(faces) and loose > MOST_LOOSE * points and not text.endswith((b"\n", b"\r")):
+        seen = f"the last line does not end, and {loose} of {points} points belong to no face"
+        raise ScanFault(seen, file=path, allowed=CUT)
 
 
 def _numbers(lines: list[bytes], key: bytes, path: Path) -> FloatArray:

@@ -11,8 +11,8 @@ from scanmass.geometry.edges import count_edges, welded
 from scanmass.scans.corners import shared
 from scanmass.scans.scan import FloatArray, Scan
 
-COARSE = 1e-5
-"""Numbers stored in steps above this share of the size deserve a warning: the steps add to the noise."""
+COARSE, TOO_COARSE = 1e-5, 1e-2
+"""Numbers stored in steps above these shares of the size: the steps add to the noise; they leave no shape."""
 
 GREATEST_SINGLE = 3.4e38
 

@@ -12,8 +12,8 @@ from scanmass.errors import ScanFault
 from scanmass.scans.finite import finite_only
 from scanmass.scans.scan import Scan
 
-SNIFF = 512
-"""A format is known by something in its first bytes."""
+SNIFF = 4096
+"""A format is known by something in its first bytes; comments may come before it."""
 
 
 @dataclass(frozen=True)
@@ -70,8 +70,10 @@ def format_of(path: Path) -> Format:
     """The format of a file by its suffix, checked against how it begins."""
     if path.is_dir():
         raise ScanFault("this is a folder", file=path, allowed="name the scan files in it")
-    if not path.is_file():
+    if not path.exists():
         raise ScanFault("there is no such file", file=path, allowed=f"looked for at {path}")
+    if not path.is_file():
+        raise ScanFault("this is a pipe or a device, no file", file=path, allowed="save the scan to a file first")
     try:
         with path.open("rb") as stream:
             start = stream.read(SNIFF)
@@ -89,7 +91,7 @@ def format_of(path: Path) -> Format:
         seen = f"the name says {named.name}, the content is {looks.name}"
         raise ScanFault(seen, file=path, allowed=f"rename it to end in {looks.suffixes[0]}")
     if looks is None and named.magic:
-        words = " or ".join(repr(mark.decode("ascii").strip()) for mark in named.magic)
+        words = " or ".join(dict.fromkeys(repr(mark.decode("ascii").strip()) for mark in named.magic))
         seen = f"the file does not begin like {named.name}"
         raise ScanFault(seen, file=path, allowed=f"it must begin with {words}: copy or export it again")
     return named
@@ -97,13 +99,13 @@ def format_of(path: Path) -> Format:
 
 def _by_content(start: bytes) -> Format | None:
     text = start.removeprefix(b"\xef\xbb\xbf").lstrip()
+    # In PCD and OFF comments may come before the first word.
+    words = next((line for line in text.splitlines() if line.strip() and not line.startswith(b"#")), b"").lstrip()
     for entry in FORMATS:
         if entry.name == "PCD":
-            # Comments may come before the first key.
-            lines = [line.strip() for line in text.split(b"\n") if not line.startswith(b"#")]
-            if text.startswith(b"# .PCD") or (lines and lines[0].startswith((b"VERSION ", b"FIELDS "))):
+            if text.startswith(b"# .PCD") or words.startswith((b"VERSION ", b"FIELDS ")):
                 return entry
-        elif entry.magic and text.startswith(entry.magic):
+        elif entry.magic and (words if entry.name == "OFF" else text).startswith(entry.magic):
             return entry
     return None
 

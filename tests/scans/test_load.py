@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import tracemalloc
 from pathlib import Path
 
@@ -117,7 +118,7 @@ def test_five_hundred_points_or_a_closed_mesh(tmp_path: Path, ball) -> None:
     assert len(load([tmp_path / "soup.ply"], "m")[0].faces) == 12
     box.update_faces(np.arange(12) > 0)
     box.export(tmp_path / "open.off")
-    assert "the scan holds 8 usable points" in refusal(tmp_path / "open.off")
+    assert "the scan holds 8 usable points in an open mesh; at least 500 are" in refusal(tmp_path / "open.off")
 
 
 @pytest.mark.parametrize(
@@ -163,6 +164,11 @@ def test_sizes_that_no_scan_has(tmp_path: Path, ball) -> None:
     assert "km, over 1 km, so the unit is probably wrong; the same numbers are 1.99" in refusal(large, unit="m")
     endless = ply(tmp_path / "c.ply", ball.points * 1e306)
     assert "over 1 km" in refusal(endless)
+    astray = ply(tmp_path / "d.ply", np.vstack([ball.points, [0, 0, 3.9e6]]))
+    assert refusal(astray) == (
+        "d.ply: the largest side is 3.9 km, over 1 km, so the file is probably corrupt, or a point of it lies far "
+        "astray; export it again; no unit that is read here makes sense of it"
+    )
 
 
 def test_points_that_are_not_finite(tmp_path: Path, ball) -> None:
@@ -195,11 +201,16 @@ def test_meshes_with_points_that_are_not_finite(tmp_path: Path) -> None:
 
 
 def test_single_precision_far_from_the_origin_is_said(tmp_path: Path, ball) -> None:
-    far = ball.points / 100 + [4e5, 5e6, 0]
-    (scan,) = load([ply(tmp_path / "a.ply", far, "<f4")], "m")
+    # Single precision has steps of 1/256 between 32768 and 65536, of 1/2 between 2^22 and 2^23.
+    near, far = ball.points / 100 + [4e3, 5e4, 0], ball.points / 100 + [4e5, 5e6, 0]
+    (scan,) = load([ply(tmp_path / "a.ply", near, "<f4")], "m")
     assert scan.warnings[0].text == (
-        "a.ply: the coordinates lie far from the origin and are stored in steps of 500 mm; "
+        "a.ply: the coordinates lie far from the origin and are stored in steps of 3.906 mm; "
         "export them nearer to the origin or in double precision."
+    )
+    assert refusal(ply(tmp_path / "d.ply", far, "<f4"), unit="m") == (
+        "d.ply: the coordinates lie so far from the origin that they are stored in steps of 500 mm, where the largest "
+        "side is 2 m; export them nearer to the origin or in double precision"
     )
     assert load([ply(tmp_path / "b.ply", far)], "m")[0].warnings == ()
     assert load([ply(tmp_path / "c.ply", ball.points, "<f4")], "mm")[0].warnings == ()
@@ -219,6 +230,22 @@ def test_points_without_a_face_are_said(tmp_path: Path) -> None:
     loose.export(tmp_path / "a.off")
     (scan,) = load([tmp_path / "a.off"], "mm")
     assert scan.warnings[0].text == "a.off: 1 of 643 points belong to no face of the mesh."
+
+
+def test_a_mesh_among_several_scans_is_said(tmp_path: Path, ball) -> None:
+    trimesh.creation.icosphere(subdivisions=3, radius=50).export(tmp_path / "m.off")
+    mesh, cloud = load([tmp_path / "m.off", ply(tmp_path / "a.ply", ball.points)], "mm")
+    assert mesh.warnings[0].text == (
+        "m.off: a mesh among several scans: its corners are used as points, its faces are not."
+    )
+    assert cloud.warnings == ()
+    assert load([tmp_path / "m.off"], "mm")[0].warnings == ()
+
+
+@pytest.mark.skipif(not hasattr(os, "mkfifo"), reason="needs named pipes")
+def test_a_pipe_is_no_file(tmp_path: Path) -> None:
+    os.mkfifo(tmp_path / "a.xyz")
+    assert refusal(tmp_path / "a.xyz") == "a.xyz: this is a pipe or a device, no file; save the scan to a file first"
 
 
 def test_large_files_stream(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:

@@ -100,6 +100,37 @@ def test_off_with_comments_and_face_colours(tmp_path: Path) -> None:
     np.testing.assert_array_equal(block.colours, [[255, 128, 0], [0, 0, 9]])
 
 
+def test_off_that_begins_with_comments(tmp_path: Path) -> None:
+    path = tmp_path / "t.off"
+    comments = "# made by some tool\n" * 40
+    path.write_text(comments + "\nOFF\n4 4 6\n0 0 0\n1 0 0\n0 1 0\n0 0 1\n3 0 2 1\n3 0 1 3\n3 1 2 3\n3 0 3 2\n")
+    assert volume(read(path)) == pytest.approx(1 / 6, rel=1e-12)
+
+
+def test_obj_that_is_cut(tmp_path: Path) -> None:
+    # Faces end to end, so that a cut at the end of a line leaves a file that reads well: only its end tells.
+    mesh = trimesh.creation.icosphere(subdivisions=3, radius=50)
+    points = "".join(f"v {x:.9f} {y:.9f} {z:.9f}\n" for x, y, z in mesh.vertices)
+    faces = [f"f {a} {b} {c}" for a, b, c in mesh.faces + 1]
+    path = tmp_path / "a.obj"
+    path.write_text(points + "\n".join(faces))
+    assert len(read(path).faces) == len(faces)
+    path.write_text(points + "\n".join(faces[:900]))
+    with pytest.raises(ScanFault, match=r"a.obj: the last line does not end, and \d+ of 642 points belong to no face;"):
+        read(path)
+    path.write_text(points[: len(points) // 2] + "\nv")
+    with pytest.raises(ScanFault, match=r"a.obj: a point or a face is begun and left empty; the file is cut or corrup"):
+        read(path)
+
+
+def test_a_mesh_file_without_faces_is_said_to_be_a_cloud(tmp_path: Path) -> None:
+    path = tmp_path / "a.obj"
+    path.write_text("v 0 0 0\nv 1 0 0\n")
+    scan = read(path)
+    assert scan.faces is None
+    assert [note.code for note in scan.warnings] == ["no-faces"]
+
+
 def test_stl_of_several_solids_and_binary_that_says_solid(tmp_path: Path) -> None:
     box = trimesh.creation.box()
     text = trimesh.exchange.stl.export_stl_ascii(box)
