@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import errno
 import functools
 import os
 import sys
 import traceback
 from collections.abc import Callable
+from contextlib import suppress
 from pathlib import Path
 from typing import ParamSpec
 
@@ -47,7 +49,7 @@ def exit_code(command: Callable[[], int]) -> int:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return DONE
     except Exception as fault:
-        known = missing_library(fault) or _file_fault(fault)
+        known = missing_library(fault) or _file_fault(fault) or _full(fault)
         return _told(str(known), USERS_FAULT) if known is not None else _bug(fault)
 
 
@@ -56,6 +58,15 @@ def _file_fault(fault: Exception) -> UserFault | None:
     if isinstance(fault, OSError) and fault.filename is not None and fault.strerror is not None:
         return UserFault(fault.strerror.lower(), file=Path(os.fsdecode(fault.filename)))
     return None
+
+
+def _full(fault: Exception) -> UserFault | None:
+    """Results that found no room where stdout leads; None for anything else."""
+    if not isinstance(fault, OSError) or fault.errno not in (errno.ENOSPC, errno.EDQUOT, errno.EFBIG):
+        return None
+    with suppress(OSError, ValueError):  # what is still buffered must not fail again at exit
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+    return UserFault(f"the result cannot be written: {os.strerror(fault.errno).lower()}", allowed="make room for it")
 
 
 def _bug(fault: Exception) -> int:

@@ -58,12 +58,15 @@ def write(result: MassResult, out_dir: str | Path, *, cells: bool = True) -> Non
 def refuse_foreign(out_dir: str | Path) -> None:
     """Check that a result may be put at ``out_dir``: nothing there, an empty folder, or an earlier result.
 
+    Asked before measuring too, so that a long run does not end at a folder that cannot be written.
+
     Raises
     ------
     UserFault
         Naming what is in the way.
     """
     target = Path(out_dir)
+    _refuse_closed(target.absolute())
     if not target.exists() and not target.is_symlink():
         return
     if not target.is_dir():
@@ -75,6 +78,18 @@ def refuse_foreign(out_dir: str | Path) -> None:
         raise UserFault(f"holds {foreign[0]!r}{others}, not written by scanmass", file=target, allowed=_REMEDY)
     if inside and not _is_ours(target / "result.json"):
         raise UserFault("holds files, but no result.json of scanmass among them", file=target, allowed=_REMEDY)
+
+
+def _refuse_closed(target: Path) -> None:
+    """Refuse a place under a file, or in a folder that may not be written; results are made beside their place."""
+    nearest = next(parent for parent in target.parents if parent.exists())
+    if not nearest.is_dir():
+        seen = f"cannot write results: {nearest.name} is a file, not a folder"
+        raise UserFault(seen, file=target, allowed="choose another folder")
+    for folder in (nearest, target):
+        if folder.is_dir() and not os.access(folder, os.W_OK | os.X_OK):
+            seen = f"cannot write results: the folder {folder} may not be written to"
+            raise UserFault(seen, file=target, allowed="choose another folder")
 
 
 def _is_ours(path: Path) -> bool:

@@ -22,6 +22,7 @@ ENDINGS: list[tuple[BaseException, int, str]] = [
     (PipelineFault(["c.yaml:1: a: bad; good", "c.yaml:2: b: bad; good"]), 2, "c.yaml:1: a: bad; good\nc.yaml:2: b"),
     (FileNotFoundError(2, "No such file or directory", "a/cube.ply"), 2, "cube.ply: no such file or directory\n"),
     (ImportError("libGL.so.1: cannot open shared object file: No such file"), 2, "the system library libGL.so.1"),
+    (OSError(28, "No space left on device"), 2, "the result cannot be written: no space left on device; make room"),
     (KeyboardInterrupt(), 130, "interrupted\n"),
     (ValueError("shape (3, 2)"), 3, "scanmass failed by a fault of its own: ValueError: shape (3, 2)\nPlease report"),
     (InvalidResult(("mass_kg: bad",)), 3, "scanmass failed by a fault of its own: InvalidResult"),
@@ -103,6 +104,15 @@ def test_a_reader_that_leaves_early_is_no_fault() -> None:
     command = f"set -o pipefail; {sys.executable} -m scanmass check --keys | head -n 1"
     ended = subprocess.run(["bash", "-c", command], capture_output=True, text=True)
     assert (ended.returncode, ended.stderr) == (0, "")
+
+
+@pytest.mark.skipif(not os.path.exists("/dev/full"), reason="needs a device that is always full")
+def test_a_full_disk_is_said_in_words() -> None:
+    with open("/dev/full", "w") as full:
+        asked = [sys.executable, "-m", "scanmass", "check", "--keys"]
+        ended = subprocess.run(asked, stdout=full, stderr=subprocess.PIPE, text=True)
+    said = "the result cannot be written: no space left on device; make room for it\n"
+    assert (ended.returncode, ended.stderr) == (2, said)
 
 
 def test_version() -> None:

@@ -85,6 +85,19 @@ def test_what_is_not_ours_is_refused_and_untouched(result: MassResult, tmp_path:
     assert sorted(tmp_path.rglob("*")) == before
 
 
+def test_a_place_that_cannot_be_written_is_refused(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    (tmp_path / "scan.ply").write_text("mine")
+    with pytest.raises(UserFault, match=r"out: cannot write results: scan.ply is a file, not a folder; choose"):
+        directory.refuse_foreign(tmp_path / "scan.ply" / "deep" / "out")
+    # Tests may run as an administrator, whom no folder is closed to.
+    monkeypatch.setattr(directory.os, "access", lambda path, _: path != tmp_path / "closed")
+    (tmp_path / "closed").mkdir()
+    for place in ("closed", "closed/new/out"):
+        with pytest.raises(UserFault, match=r"cannot write results: the folder .*closed may not be written to; choose"):
+            directory.refuse_foreign(tmp_path / place)
+    directory.refuse_foreign(tmp_path / "open" / "out")
+
+
 def test_nothing_half_written(result: MassResult, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     write(result, tmp_path / "out")
     before = _bytes(tmp_path / "out")
