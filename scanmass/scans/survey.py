@@ -99,11 +99,11 @@ def _gather(points, first, box, sums):  # type: ignore[no-untyped-def]
 
 
 def is_closed(scan: Scan) -> bool:
-    """Whether the scan is a mesh whose every edge has two faces, equal points counting as one."""
+    """Whether the scan is a mesh without open edges, equal points counting as one; faces may be turned any way."""
     if scan.faces is None:
         return False
-    if count_edges(scan.faces).closed:
+    if len(scan.faces) > 0 and count_edges(scan.faces).open == 0:
         return True
     places, which = shared(scan.points())
     _, faces = welded(places, which[scan.faces])
-    return len(faces) > 0 and count_edges(faces).closed
+    return len(faces) > 0 and count_edges(faces).open == 0

@@ -116,6 +116,10 @@ def test_five_hundred_points_or_a_closed_mesh(tmp_path: Path, ball) -> None:
     soup = trimesh.Trimesh(box.triangles.reshape(-1, 3), np.arange(36).reshape(-1, 3), process=False)
     soup.export(tmp_path / "soup.ply")
     assert len(load([tmp_path / "soup.ply"], "m")[0].faces) == 12
+    # Windings that disagree leave no edge open; the surface turns them.
+    faces = np.where(np.arange(12)[:, None] % 3 == 0, box.faces[:, ::-1], box.faces)
+    trimesh.Trimesh(box.vertices, faces, process=False).export(tmp_path / "turned.off")
+    assert len(load([tmp_path / "turned.off"], "m")[0].faces) == 12
     box.update_faces(np.arange(12) > 0)
     box.export(tmp_path / "open.off")
     assert "the scan holds 8 usable points in an open mesh; at least 500 are" in refusal(tmp_path / "open.off")
