@@ -31,6 +31,11 @@ AGREE = 0.93
 DOUBT = 0.15
 """Share of samples where scanner positions contradict the rays above which they are not believed."""
 
+SHEET = 3.0
+"""Spread across, over the noise off local planes, below which points are one flat sheet: 1.5 for normal noise."""
+SLENDER = 0.005
+"""Spread across over spread along below which what cannot be oriented is called a line."""
+
 
 @dataclass(frozen=True)
 class Oriented:
@@ -79,6 +84,7 @@ def orient(cloud: Cloud, *, floor: Floor | None = None, progress: Progress = sil
         silent_share = float(np.mean(evidence[:: _stride(cloud.points)] == 0))
         undecided = silent_share if silent_share > MOST_SILENT else undecided
     if undecided > MOST_UNDECIDED:
+        _refuse_sheet(cloud.points, raw.noise)
         raise Declined(
             f"for {undecided:.0%} of the points outside cannot be told from inside",
             allowed="give a scan with scanner positions or outward normals, scan more of the object, "
@@ -87,6 +93,22 @@ def orient(cloud: Cloud, *, floor: Floor | None = None, progress: Progress = sil
     normals = raw.normals * np.where(belief < 0, -1.0, 1.0)[:, None]
     progress("normals", 3, 3)
     return Oriented(replace(cloud, normals=normals), method, undecided, raw.noise, warnings=tuple(notes))
+
+
+def _refuse_sheet(points: FloatArray, noise: float) -> None:
+    """Say so where the points have no inside because they are one flat sheet, or a line, with noise."""
+    middle = points - points.mean(axis=0)
+    across, wide, along = np.sqrt(np.maximum(np.linalg.eigvalsh(middle.T @ middle / len(points)), 0.0))
+    if wide <= SLENDER * along:
+        shape = "on a line"
+    elif across <= SHEET * noise:
+        shape = "in one plane"
+    else:
+        return
+    raise Declined(
+        f"but for noise all points lie {shape}, so there is no inside to weigh",
+        allowed="scan the other sides of the object too, or crop less of it",
+    )
 
 
 def _rays(points: FloatArray, raw: RawNormals, floor: Floor | None) -> FloatArray:

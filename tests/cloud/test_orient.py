@@ -123,13 +123,21 @@ def test_file_normals_are_checked(kind, method, codes):
     assert right(done, normals) > 0.995
 
 
-@pytest.mark.parametrize("case", ["one flat sheet", "walls too thin", "cavity too coarse"])
+@pytest.mark.parametrize(
+    ("sides", "said"),
+    [((1, 1, 0.001), "in one plane"), ((1, 0.5, 0.02), "in one plane"), ((1, 0.001, 0.001), "on a line")],
+)
+def test_a_sheet_and_a_line_are_called_so(sides, said):
+    points = np.random.default_rng(99).uniform(-0.5, 0.5, size=(4000, 3)) * sides
+    turn = np.linalg.qr(np.random.default_rng(98).normal(size=(3, 3)))[0]
+    with pytest.raises(Declined, match=f"^but for noise all points lie {said}, so there is no inside to weigh; scan"):
+        orient(cloud_of(points @ turn))
+
+
+@pytest.mark.parametrize("case", ["walls too thin", "cavity too coarse"])
 def test_refused_where_the_sides_cannot_be_told(case):
-    if case == "one flat sheet":
-        points = np.random.default_rng(99).uniform(size=(4000, 3)) * (1, 1, 0.001)
-    else:
-        name, n = {"walls too thin": ("thin closed box", 60_000), "cavity too coarse": ("hollow sphere", 500)}[case]
-        points, _ = sampled(body(name), n)
+    name, n = {"walls too thin": ("thin closed box", 60_000), "cavity too coarse": ("hollow sphere", 500)}[case]
+    points, _ = sampled(body(name), n)
     with pytest.raises(Declined, match=r"^for \d+% of the points outside cannot be told from inside; give a scan with"):
         orient(cloud_of(points))
 
