@@ -9,6 +9,7 @@ from scipy.sparse import csr_matrix
 from scanmass.cloud.cloud import Cloud
 from scanmass.geometry.edges import half_edges
 from scanmass.geometry.neighbours import nearest
+from scanmass.geometry.polyhedron import face_areas
 from scanmass.geometry.triangles import between, closest, dot, mixed, row
 from scanmass.progress import Progress, silent
 from scanmass.surface.mesh import FaceArray, FloatArray, Mesh
@@ -19,6 +20,8 @@ REACH = 3.0
 LEAST_POINTS = 3.0
 """A vertex moves by the mean over so many samples or more: those of its neighbours, or where samples are fewer than
 vertices of wider rings."""
+FEW = 0.5
+"""A vertex with fewer samples than this counts for less than its area."""
 RINGS = 6
 """... but of no more than so many rings."""
 
@@ -45,7 +48,11 @@ def refine(mesh: Mesh, cloud: Cloud, *, rounds: int = ROUNDS, progress: Progress
         pull, total, seen = _pulls(
             points, weight, owner, vertices, normals, mesh.faces, start, fan, REACH * mesh.resolution
         )
-        move = _means(ring, pull, total, seen)
+        # A rounded corner of the mesh gathers the samples of both faces on less area than they came from. Weighed by
+        # samples, it would push its neighbours out for it (a fifth of the pitch squared for each metre of edge).
+        area = _areas(vertices, mesh.faces) / np.maximum(seen, FEW)
+        share = np.where(seen > 0, area * seen / np.where(total > 0, total, 1.0), 0.0)
+        move = _means(ring, share * pull, share * total, seen)
         vertices = vertices + np.clip(move, -mesh.resolution, mesh.resolution)[:, None] * normals
     progress("refine", rounds, rounds)
     return mesh.moved(vertices + middle)
@@ -65,6 +72,13 @@ def _means(ring: csr_matrix, pull: FloatArray, total: FloatArray, seen: FloatArr
         if settled.all():
             break
     return mean
+
+
+def _areas(vertices: FloatArray, faces: FaceArray) -> FloatArray:
+    """Area (n,) that each vertex stands for: a third of the faces round it."""
+    area, _ = face_areas(vertices, faces)
+    owned: FloatArray = np.bincount(faces.ravel(), np.repeat(area / 3.0, 3), minlength=len(vertices)).astype(np.float64)
+    return owned
 
 
 def vertex_normals(vertices: FloatArray, faces: FaceArray) -> FloatArray:

@@ -18,6 +18,7 @@ from scanmass.uncertainty.axes import PrincipalAxes
 from scanmass.uncertainty.bracket import Bound, axes_over, merged
 from scanmass.uncertainty.budget import BudgetRow, bracket_row, budget
 from scanmass.uncertainty.declared import Declared, field_rows, from_declaration, unknown, upper_bound
+from scanmass.uncertainty.detail import detail_rows
 from scanmass.uncertainty.estimate import Estimate, ShapeFigures, bare_figures, shape_figures
 from scanmass.uncertainty.noise import NoiseModel
 from scanmass.uncertainty.region import Region, region
@@ -98,7 +99,7 @@ def bound(
     shapes = {"": parts} | {c.name: _closed(parts, translated(c.moments, -centre)) for c in surface.closures}
 
     def carried(by: NoiseModel) -> tuple[tuple[Term, ...], dict[str, Replicates], dict[str, ShapeFigures]]:
-        terms = _terms(surface, patched, by, wanted, parts, centre)
+        terms = _terms(surface, cloud, patched, by, wanted, parts, centre)
         if by.basis == "none":
             return terms, {}, {name: bare_figures(shape, centre, level) for name, shape in shapes.items()}
         draws = {
@@ -194,6 +195,7 @@ def _noise(
 
 def _terms(
     surface: Surface,
+    cloud: Cloud | None,
     patched: patches.Patches,
     model: NoiseModel,
     declared: Declared,
@@ -215,6 +217,10 @@ def _terms(
     if surface.coarse_moments is not None:
         refined = parts.moments.sum(axis=0) - translated(surface.coarse_moments, -centre)
         found.append(Term("reconstruction", "random", on_outer_part(0.5 * refined[None], parts)))
+    if surface.source == "points" and cloud is not None:
+        rows = detail_rows(surface, cloud, centre)
+        if rows.any():
+            found.append(Term("edges finer than the points", "random", on_outer_part(rows, parts)))
     return tuple(found)
 
 

