@@ -6,6 +6,7 @@ from collections.abc import Sequence
 from typing import Any
 
 import numpy as np
+import numpy.typing as npt
 
 from scanmass.density.fill import DensityMap
 from scanmass.errors import Note
@@ -17,6 +18,8 @@ from scanmass.pipeline.shape import Shape
 from scanmass.scans.scan import Scan
 from scanmass.uncertainty.bounds import Bounds
 from scanmass.uncertainty.document import as_document
+
+FloatArray = npt.NDArray[np.float64]
 
 
 def assemble(
@@ -31,13 +34,14 @@ def assemble(
 ) -> dict[str, Any]:
     """``result.json`` as a dict, in the contract's order."""
     found = as_document(bounds)
-    points = {name: np.array(place) - shape.origin for name, place in settings.points.items()}
+    scale = settings.scan.scale
+    points = _scaled_places(settings, shape)
     center = document.moved_center(found["center_of_mass_m"], shape.origin)
-    center["offsets"] = offsets(bounds, points)
+    center["offsets"] = offsets(bounds, points, scale)
     center["height_above_base_m"] = None
     if shape.up is not None and shape.base_height is not None:
-        center["height_above_base_m"] = height(bounds, shape.surface.closures, shape.up, shape.base_height)
-    total = sum(scan.total for scan in scans)
+        center["height_above_base_m"] = height(bounds, shape.surface.closures, shape.up, shape.base_height, scale)
+    total = sum(document.returns(scan) for scan in scans)
     said = [n for scan in scans for n in scan.assumptions]
     warned = [n for scan in scans for n in scan.warnings]
     return {
@@ -67,3 +71,13 @@ def assemble(
         ),
         "warnings": document.note_rows([*warned, *shape.warnings, *bounds.warnings]),
     }
+
+
+def _scaled_places(settings: Pipeline, shape: Shape) -> dict[str, FloatArray]:
+    """The named points (3,) in the working frame, where the declared scale has taken them.
+
+    The surface was scaled about the mean of its vertices, which stays where it was.
+    """
+    middle = shape.surface.vertices.mean(axis=0)
+    scale = 1.0 if settings.scan.scale is None else float(settings.scan.scale.value)
+    return {name: middle + scale * (np.array(place) - shape.origin - middle) for name, place in settings.points.items()}

@@ -46,6 +46,7 @@ def scan_rows(scans: Sequence[Scan], used: Cloud | None) -> list[dict[str, Any]]
     for scan in scans:
         last = first + len(scan.views)
         here = None if used is None else (used.view >= first) & (used.view < last)
+        measured = returns(scan)
         rows.append(
             {
                 "file": scan.file,
@@ -53,13 +54,18 @@ def scan_rows(scans: Sequence[Scan], used: Cloud | None) -> list[dict[str, Any]]
                 "format": scan.format,
                 "unit": scan.file_unit,
                 "unit_from": scan.unit_from,
-                "points": scan.total,
-                "points_used": scan.total if here is None or used is None else int(used.count[here].sum()),
+                "points": measured,
+                "points_used": measured if here is None or used is None else int(used.count[here].sum()),
                 "views": len(scan.views),
             }
         )
         first = last
     return rows
+
+
+def returns(scan: Scan) -> int:
+    """Points that were measured: what a scanner recorded as no return is no point."""
+    return scan.total - scan.no_return
 
 
 def removed_rows(removed: Removed, total: int) -> list[dict[str, Any]]:

@@ -7,8 +7,10 @@ from typing import Any
 
 import numpy as np
 import numpy.typing as npt
+from scipy.stats import norm
 from scipy.stats import t as student
 
+from scanmass.doubt import Figure
 from scanmass.geometry.moments import centroid, translated
 from scanmass.surface.surface import Closure
 from scanmass.uncertainty.bounds import Bounds
@@ -16,25 +18,40 @@ from scanmass.uncertainty.bounds import Bounds
 FloatArray = npt.NDArray[np.float64]
 
 
-def offsets(bounds: Bounds, points: Mapping[str, FloatArray]) -> list[dict[str, Any]]:
-    """The centre of mass from each named point (3,), along the scan's axes, metres; the points are taken as exact."""
+def offsets(bounds: Bounds, points: Mapping[str, FloatArray], scale: Figure | None = None) -> list[dict[str, Any]]:
+    """The centre of mass from each named point (3,), along the scan's axes, metres.
+
+    The points are taken as exact, but a distance grows with the scan's ``scale``, so its doubt counts here.
+    """
+    return [{"name": name, "offset_m": _offset(bounds, point, scale)} for name, point in points.items()]
+
+
+def _offset(bounds: Bounds, point: FloatArray, scale: Figure | None) -> dict[str, Any]:
     com = bounds.com
-    return [
-        {
-            "name": name,
-            "offset_m": {
-                "value": (com.value - point).tolist(),
-                "std": None if com.std is None else com.std.tolist(),
-                "low": None if com.low is None else (com.low - point).tolist(),
-                "high": None if com.high is None else (com.high - point).tolist(),
-            },
-        }
-        for name, point in points.items()
-    ]
+    value = com.value - point
+    if com.std is None or com.low is None or com.high is None or com.random_low is None or com.random_high is None:
+        return {"value": value.tolist(), "std": None, "low": None, "high": None}
+    stretch = _growth(scale) * np.abs(value)
+    reach = float(norm.ppf(0.5 + 0.5 * bounds.level)) * stretch
+    # Scale and the rest are independent: half-widths add as squares, on the random part of each side.
+    below, above = com.value - com.random_low, com.random_high - com.value
+    return {
+        "value": value.tolist(),
+        "std": np.hypot(com.std, stretch).tolist(),
+        "low": (com.low - point - (np.hypot(below, reach) - below)).tolist(),
+        "high": (com.high - point + (np.hypot(above, reach) - above)).tolist(),
+    }
 
 
-def height(bounds: Bounds, closures: Sequence[Closure], up: FloatArray, base: float) -> dict[str, float | None]:
-    """The centre of mass above the plane ``up . r = base``, metres; the plane is taken as exact.
+def _growth(scale: Figure | None) -> float:
+    """Standard deviation of a length for each metre of it."""
+    return 0.0 if scale is None or scale.std is None else float(scale.std) / float(scale.value)
+
+
+def height(
+    bounds: Bounds, closures: Sequence[Closure], up: FloatArray, base: float, scale: Figure | None = None
+) -> dict[str, float | None]:
+    """The centre of mass above the plane ``up . r = base``, metres; the plane is taken as exact, its distance scales.
 
     The ends are those of every shape the unseen part could have, each with the random and declared half-width.
     """
@@ -42,7 +59,8 @@ def height(bounds: Bounds, closures: Sequence[Closure], up: FloatArray, base: fl
     heights = [value, *(float(up @ centre) - base for centre in _centres(bounds, closures))]
     if bounds.com_covariance is None:
         return {"value": value, "std": None, "low": None, "high": None}
-    std = float(np.sqrt(up @ bounds.com_covariance @ up))
+    stretch = _growth(scale) * max(abs(number) for number in heights)
+    std = float(np.sqrt(up @ bounds.com_covariance @ up + stretch**2))
     degrees = bounds.com.degrees_of_freedom
     nu = np.inf if degrees is None else float(np.min(degrees))
     reach = float(student.ppf(0.5 + 0.5 * bounds.level, nu)) * std
