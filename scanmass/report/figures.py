@@ -11,13 +11,16 @@ from scanmass.units import rounded, system, unit_named
 System = Literal["metric", "us"]
 
 NO_BOUND = "no bound"
-EXACT = "exact, as declared"
+EXACT = "no doubt declared"
+"""For ends that do not differ because nothing in doubt was declared: a nominal model, a density without ±."""
 UNKNOWN_DOUBT = "no doubt found: no claim"
 """For ends that do not differ although nobody declared so."""
 SMALLEST_SHARE = 1e-9
 """A half-width below this share of the quantity's own size is rounding of the arithmetic, not doubt."""
 
 LEAST_SHARE = 1e-5
+UNBOUNDED_DIGITS = 4
+"""More would look like knowledge where no bound is known."""
 
 _FINER = {
     "kg": "g",
@@ -72,7 +75,7 @@ class Ruler:
     def words(self, value: float, low: float | None, high: float | None) -> Words:
         """Value and ends, all to the second digit of the half-width, the ends rounded outward."""
         if low is None or high is None:
-            return Words(f"{self.plain(value)} {self.unit}", "", NO_BOUND)
+            return Words(f"{self.plain(value, UNBOUNDED_DIGITS)} {self.unit}", "", NO_BOUND)
         half = max(value - low, high - value)
         if half <= SMALLEST_SHARE * self.size:
             return Words(f"{self.plain(value)} {self.unit}", "", self.same)
@@ -87,9 +90,13 @@ class Ruler:
         >>> Ruler.of("length", 0.3, "metric").std(0.000123)
         '0.12 mm'
         """
-        if std <= SMALLEST_SHARE * self.size:
+        if self.is_nothing(std):
             return f"0 {self.unit}"
         return f"{rounded(0.0, std / self.si)[1]} {self.unit}"
+
+    def is_nothing(self, std: float) -> bool:
+        """Whether a standard deviation is but the rounding of the arithmetic."""
+        return abs(std) <= SMALLEST_SHARE * self.size
 
     def stds(self, stds: list[float], link: str) -> str:
         """Several of them, the unit once at the end.
@@ -100,9 +107,9 @@ class Ruler:
         texts = [self.std(std).removesuffix(f" {self.unit}") for std in stds]
         return f"{link.join(texts)} {self.unit}"
 
-    def plain(self, value: float) -> str:
-        """Six digits at most, what is below the size's rounding as zero, no unit."""
-        return number(0.0 if abs(value) <= SMALLEST_SHARE * self.size else value / self.si)
+    def plain(self, value: float, digits: int = 6) -> str:
+        """So many digits at most, what is below the size's rounding as zero, no unit."""
+        return number(0.0 if self.is_nothing(value) else value / self.si, digits)
 
 
 def number(value: float, digits: int = 6) -> str:

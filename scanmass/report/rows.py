@@ -2,14 +2,19 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable, Iterator
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 from typing import Any, Literal, Protocol
 
 from scanmass.report import wording
 from scanmass.report.figures import EXACT, UNKNOWN_DOUBT, Ruler, System, share
 
 Document = dict[str, Any]
+LEAST_NAMED = 1e-3
+"""Shares of the doubt below this are not told apart."""
+MUCH_CLUTTER = 0.05
+"""Share of the points taken for clutter above which a reader must know before the figures."""
 Kind = Literal["lead", "result", "measured", "bracketed", "declared", "assumed", "declined", "warning", "caution"]
 
 
@@ -87,13 +92,13 @@ def rows(document: Document, name: System = "metric", understood: Iterable[Under
         Section("Read this first", "lead", tuple(_lead(document))),
         Section("Warnings", "warning", tuple(_notes(document["warnings"]))),
         Section("Weight and volume", "result", tuple(_weight(document, use)), _level(document)),
-        Section("Centre of mass", "result", tuple(_centre(document, use)), "In the frame of the first scan."),
+        Section("Centre of mass", "result", tuple(_centre(document, use)), "In the coordinates of the first scan."),
         Section("Principal moments and axes", "result", tuple(_principal(document, use)), "About the centre of mass."),
         Section("Inertia tensor", "result", tuple(_inertia(document, use)), _sign(document)),
         Section("Measured: the scan", "measured", tuple(_scan(document, use))),
         Section("Taken away before weighing", "measured", tuple(_removed(document))),
         Section("Bracketed: what was not seen", "bracketed", tuple(_bracketed(document, use)), _BRACKET),
-        Section("Where the doubt comes from", "result", tuple(_budget(document, use)), _dominant(document)),
+        Section("Where the doubt comes from", "result", tuple(_budget(document, use)), _dominant(document, use)),
         Section("Declared: quantities as understood", "declared", tuple(Row(q.key, q.text) for q in understood)),
         Section("Assumed", "assumed", tuple(_notes(document["assumptions"]))),
         Section("Declined: not claimed", "declined", tuple(_declined(document))),
@@ -102,7 +107,7 @@ def rows(document: Document, name: System = "metric", understood: Iterable[Under
     return tuple(section for section in sections if section.rows)
 
 
-_BRACKET = "Least and greatest over the shapes it could have. Not random: no level attaches to it."
+_BRACKET = "Least and greatest over the shapes it could have, taken alone. Not random: no percentage attaches to it."
 
 
 def _level(document: Document) -> str:
@@ -112,23 +117,34 @@ def _level(document: Document) -> str:
 
 
 def _sign(document: Document) -> str:
-    return f"About the centre of mass, along the axes of the scan; {document['inertia_kg_m2']['sign']}."
+    return (
+        f"About the centre of mass, along the axes of the scan; {document['inertia_kg_m2']['sign']}, so that products "
+        "carry the minus sign: Ixy = -integral x y dm."
+    )
 
 
-def _dominant(document: Document) -> str:
-    return " ".join(filter(None, (wording.dominant(document, of) for of in ("mass", "com"))))
+def _dominant(document: Document, use: Rulers) -> str:
+    rulers = (("mass", use.mass), ("com", use.length))
+    most = " ".join(filter(None, (wording.dominant(document, of, ruler) for of, ruler in rulers)))
+    return f"{most} Below: one standard deviation of each source, and its share." if most else ""
 
 
 def _lead(document: Document) -> Iterator[Row]:
     reason = wording.no_bound(document)
     if reason is not None:
-        yield Row(f"no bound can be given: {reason}")
+        yield Row(f"No bound can be given: {reason}")
     unseen = wording.bracket_leads(document)
     if unseen is not None:
         yield Row(unseen)
+    clutter = sum(removed["share"] for removed in document["removed"] if removed["reason"] == "clutter")
+    if clutter > MUCH_CLUTTER:
+        yield Row(f"{share(clutter)} of the points were taken for clutter and not weighed: look at removed.ply.")
     undetermined = sum(not p["determined"] for p in document["principal"])
     if undetermined:
-        yield Row(f"{undetermined} of the 3 principal axes cannot be told from this scan; see there.")
+        which = (
+            "None of the principal axes can" if undetermined == 3 else f"{undetermined} of the 3 principal axes cannot"
+        )
+        yield Row(f"{which} be told from this scan; see below.")
 
 
 def _figure(label: str, figure: Document, ruler: Ruler, remark: str = "") -> Row:
@@ -161,15 +177,18 @@ def _centre(document: Document, use: Rulers) -> Iterator[Row]:
     for offset in centre.get("offsets", ()):
         yield from _axes(f"from {offset['name']}: ", offset["offset_m"], use.length)
     region = centre["region"]
-    if region is not None:
+    if region is not None and not all(use.length.is_nothing(radius) for radius in region["radii_m"]):
         radii = use.length.stds(region["radii_m"], " x ")
         remark = f"{share(region['level'])} region of the random and declared doubt, all three axes together"
-        yield Row("region, half-axes", radii, "", remark)
+        yield Row("region, half-axes", "", radii, remark)
 
 
 def _principal(document: Document, use: Rulers) -> Iterator[Row]:
-    for label, principal in zip(("least", "middle", "greatest"), document["principal"], strict=True):
-        yield _figure(label, principal["moment_kg_m2"], use.inertia, wording.direction(principal))
+    said = [wording.direction(principal) for principal in document["principal"]]
+    for k, (label, principal) in enumerate(zip(("least", "middle", "greatest"), document["principal"], strict=True)):
+        # Moments that share a plane, or have no axis at all, share a sentence: it stands under the last of them.
+        remark = "" if said[k] in said[k + 1 :] else said[k]
+        yield _figure(label, principal["moment_kg_m2"], use.inertia, remark)
 
 
 def _inertia(document: Document, use: Rulers) -> Iterator[Row]:
@@ -189,7 +208,7 @@ def _scan(document: Document, use: Rulers) -> Iterator[Row]:
     shells = "1 shell" if surface["shells"] == 1 else f"{surface['shells']} shells"
     made = "reconstructed from points" if surface["source"] == "points" else "the mesh of the scan itself"
     detail = f"{made}: {surface['triangles']} triangles, {shells}; {wording.underside(document)}"
-    yield Row("surface", f"{use.area.plain(surface['area_m2'])} {use.area.unit}", "", detail)
+    yield Row("surface", use.area.words(surface["area_m2"], None, None).value, "", detail)
     seen = surface["observed_fraction"]
     yield Row("seen", f"{share(seen)} of the area", "", f"inferred, where no point lies near: {share(1 - seen)}")
     if document["frame"]["up"] is not None:
@@ -218,11 +237,11 @@ def _bracketed(document: Document, use: Rulers) -> Iterator[Row]:
             yield Row(label, "", ends, _beside(figure, ruler))
     centre = document["center_of_mass_m"]
     if centre["bracket"] is not None:
-        yield from _axes(
-            "centre of mass ",
-            {"value": centre["value"], **centre["bracket"]},
-            replace(use.length, same="the same for all"),
-        )
+        for k, axis in enumerate("xyz"):
+            low, high = centre["bracket"]["low"][k], centre["bracket"]["high"][k]
+            words = use.length.words(centre["value"][k], low, high)
+            same = use.length.is_nothing(high - low)
+            yield Row(f"centre of mass {axis}", "", "the same for all" if same else words.ends)
 
 
 def _beside(figure: Document, ruler: Ruler) -> str:
@@ -232,28 +251,34 @@ def _beside(figure: Document, ruler: Ruler) -> str:
 
 
 def _budget(document: Document, use: Rulers) -> Iterator[Row]:
-    for row in document["budget"]:
-        if row["kind"] == "bracket":
-            mass, centre, word = row["mass_half_range_kg"], row["com_half_range_m"], "half range"
-        else:
-            mass, centre, word = row["mass_std_kg"], row["com_std_m"], "std"
-        each = centre if isinstance(centre, list) else [centre]
-        on_mass = "" if mass is None else f"{word} {use.mass.std(mass)}"
-        on_centre = "" if centre is None else f"centre {use.length.stds(each, ' / ')}"
-        yield Row(row["source"], on_mass, on_centre, _shares(row))
+    """The sources, the greatest first; brackets, which are no part of the shares, last."""
+    if document["budget"]:
+        yield Row("source, random if not named", "mass", "centre of mass")
+    for row in sorted(document["budget"], key=lambda row: -max(row["share_mass"] or 0.0, row["share_com"] or 0.0)):
+        ends = row["kind"] == "bracket"
+        mass, centre = (row[key] for key in (_HALVES if ends else _STDS))
+        length = None if centre is None else math.hypot(*(centre if isinstance(centre, list) else [centre]))
+        on_mass = _doubt(mass, use.mass, row["share_mass"], ends)
+        on_centre = _doubt(length, use.length, row["share_com"], ends)
+        yield Row(row["source"] + ("" if row["kind"] == "random" else f", {row['kind']}"), on_mass, on_centre)
 
 
-def _shares(row: Document) -> str:
-    parts = [row["kind"]]
-    for key, what in (("share_mass", "mass"), ("share_com", "centre of mass")):
-        if row[key] is not None:
-            parts.append(f"{share(row[key])} of the doubt of the {what}")
-    return ", ".join(parts)
+_STDS, _HALVES = ("mass_std_kg", "com_std_m"), ("mass_half_range_kg", "com_half_range_m")
+
+
+def _doubt(size: float | None, ruler: Ruler, part: float | None, ends: bool) -> str:
+    if size is None or ruler.is_nothing(size):
+        return "none" if size is not None else ""
+    of = "" if part is None else f", {'under 0.1 %' if part < LEAST_NAMED else share(part)}"
+    return f"{'± ' if ends else ''}{ruler.std(size)}{of}"
 
 
 def _notes(notes: list[Document]) -> Iterator[Row]:
     for note in notes:
-        yield Row(note["text"], remark=f"[{note['code']}]")
+        text = note["text"]
+        first = text.split(" ", 1)[0]
+        # File names keep their case.
+        yield Row(text[:1].upper() + text[1:] if first.isalpha() else text, remark=f"[{note['code']}]")
 
 
 def _declined(document: Document) -> Iterator[Row]:

@@ -55,7 +55,11 @@ def _rows(rows: tuple[Row, ...], console: Console) -> None:
     value_width = max((len(row.value) for row in columns), default=0)
     for row in rows:
         if row not in columns:
-            _indented(row.label, 2, console)
+            # A code in brackets ends its sentence; any other remark stands below.
+            code = row.remark if row.remark.startswith("[") else ""
+            _indented(f"{row.label} {code}".rstrip(), 2, console, mark="- " if code or not row.remark else "")
+            if code:
+                continue
         else:
             line = f"  {row.label:<{label_width}}  {row.value:<{value_width}}  {row.bounds}".rstrip()
             if len(line) <= console.width:
@@ -67,9 +71,16 @@ def _rows(rows: tuple[Row, ...], console: Console) -> None:
             _indented(row.remark, 6, console, "dim")
 
 
-def _indented(text: str, by: int, console: Console, style: str = "") -> None:
+def _indented(text: str, by: int, console: Console, style: str = "", mark: str = "") -> None:
     from rich.text import Text
 
     blank = " " * by
-    lines = wrap(text, max(console.width, by + 20), initial_indent=blank, subsequent_indent=blank)
+    further = blank + " " * len(mark)
+    lines = wrap(
+        text,
+        max(console.width, by + 20),
+        initial_indent=blank + mark,
+        subsequent_indent=further,
+        break_on_hyphens=False,
+    )
     console.print(Text("\n".join(lines), style=style), soft_wrap=True)

@@ -68,13 +68,17 @@ def direction(principal: Document) -> str:
         axis = f"along {triple(principal['axis'])}"
         if principal["cone_deg"] is None:
             return f"{axis}; no bound on its direction"
-        return f"{axis}, true within {principal['cone_deg']:.2g} deg"
+        return f"{axis}, true within {max(principal['cone_deg'], FINEST_CONE):.2g} deg"
     if principal["plane_normal"] is None:
         return "axis undetermined: the moments are too close to tell, any direction will do"
     return (
         "axis undetermined: two moments are too close to tell; it lies anywhere in the plane square to "
         f"{triple(principal['plane_normal'])}"
     )
+
+
+FINEST_CONE = 0.01
+"""Degrees: four places of a direction do not tell less."""
 
 
 def triple(vector: list[float]) -> str:
@@ -86,10 +90,14 @@ def triple(vector: list[float]) -> str:
     return "(" + ", ".join(f"{round(x, 4) + 0.0:.4f}" for x in vector) + ")"
 
 
-def dominant(document: Document, of: str) -> str | None:
-    """The source most of the random and declared doubt comes from; ``of`` is "mass" or "com"."""
+def dominant(document: Document, of: str, ruler: Ruler) -> str | None:
+    """The source most of the random and declared doubt comes from; ``of`` is "mass" or "com".
+
+    None where there is no such doubt, or only what the arithmetic rounds.
+    """
     rows = [row for row in document["budget"] if row[f"share_{of}"] is not None]
-    if not rows:
+    stds = [row["mass_std_kg" if of == "mass" else "com_std_m"] for row in rows]
+    if all(ruler.is_nothing(x) for std in stds for x in (std if isinstance(std, list) else [std])):
         return None
     most = max(rows, key=lambda row: float(row[f"share_{of}"]))
     what = "mass" if of == "mass" else "centre of mass"
@@ -105,7 +113,7 @@ def bracket_leads(document: Document) -> str | None:
     if not led:
         return None
     return (
-        f"what was not seen is worth more than all other doubt of the {' and the '.join(led)}: scan it, or declare it."
+        f"What was not seen is worth more than all other doubt of the {' and the '.join(led)}: scan it, or declare it."
     )
 
 

@@ -39,7 +39,7 @@ def test_kilograms_and_millimetres(document: Document) -> None:
     assert centre["z"][:2] == ("49.7 mm", "48.2 to 51.2 mm")
     assert centre["from near corner: x"][:2] == ("50.00 mm", "49.60 to 50.40 mm")
     assert centre["height above the base"][0] == "49.7 mm"
-    assert centre["region, half-axes"][0] == "0.60 x 0.60 x 0.90 mm"
+    assert centre["region, half-axes"][1] == "0.60 x 0.60 x 0.90 mm"
 
 
 def test_pounds_and_inches(document: Document) -> None:
@@ -58,7 +58,7 @@ def test_no_bound_leads_and_is_never_zero(document: Document) -> None:
     document["warnings"].append({"code": "noise-unknown", "text": "The mesh has 12 vertices and no declared noise."})
     first = rows(document)[0]
     assert first.title == "Read this first"
-    assert first.rows[0].label == "no bound can be given: The mesh has 12 vertices and no declared noise."
+    assert first.rows[0].label == "No bound can be given: The mesh has 12 vertices and no declared noise."
     assert _lines(_sections(document)["Weight and volume"])["mass"][:2] == ("7 kg", "no bound")
     assert _sections(document)["Weight and volume"].note.startswith("Best figures only: no bound is claimed")
     assert "exact" not in _lines(_sections(document)["Centre of mass"])["x"][1]
@@ -69,25 +69,34 @@ def test_no_difference_is_called_exact_only_where_declared(document: Document) -
     said = [_lines(_sections(document)["Weight and volume"])["mass"][1]]
     document["noise"] |= {"basis": "declared", "std_m": 0.0}
     said.append(_lines(_sections(document)["Weight and volume"])["mass"][1])
-    assert said == ["no doubt found: no claim", "exact, as declared"]
+    assert said == ["no doubt found: no claim", "no doubt declared"]
+    document["center_of_mass_m"]["region"]["radii_m"] = [0.0, 0.0, 1e-15]
+    assert "region, half-axes" not in _lines(_sections(document)["Centre of mass"])
 
 
 def test_what_was_not_seen_leads_when_it_is_larger(document: Document) -> None:
     lead = [row.label for row in rows(document)[0].rows]
     # The bracket of the centre spans 2 mm, its random part 1.2 mm; of the mass 0.2 kg against 0.8 kg.
-    assert lead[0].startswith("what was not seen is worth more than all other doubt of the centre of mass: scan it")
+    assert lead[0].startswith("What was not seen is worth more than all other doubt of the centre of mass: scan it")
     document["center_of_mass_m"]["bracket"]["low"][2] = 0.0496
     assert not any("not seen" in row.label for row in rows(document)[0].rows)
 
 
 def test_axes_in_words(document: Document) -> None:
     remarks = {row.label: row.remark for row in _sections(document)["Principal moments and axes"].rows}
-    assert remarks["least"] == "axis undetermined: the moments are too close to tell, any direction will do"
+    said = "axis undetermined: the moments are too close to tell, any direction will do"
+    assert remarks == {"least": "", "middle": "", "greatest": said}
+    assert rows(document)[0].rows[-1].label.startswith("None of the principal axes can be told from this scan")
     document["principal"][0] |= {"determined": True, "cone_deg": 3.21}
-    document["principal"][1] |= {"plane_normal": [1.0, 0.0, 0.0]}
+    for k in (1, 2):
+        document["principal"][k] |= {"plane_normal": [1.0, 0.0, 0.0]}
     remarks = {row.label: row.remark for row in _sections(document)["Principal moments and axes"].rows}
     assert remarks["least"] == "along (1.0000, 0.0000, 0.0000), true within 3.2 deg"
-    assert remarks["middle"].endswith("anywhere in the plane square to (1.0000, 0.0000, 0.0000)")
+    assert remarks["greatest"].endswith("anywhere in the plane square to (1.0000, 0.0000, 0.0000)")
+    assert remarks["middle"] == ""
+    # Four places of a direction are worth 0.006 degrees: less is not claimed.
+    document["principal"][0]["cone_deg"] = 1e-4
+    assert _sections(document)["Principal moments and axes"].rows[0].remark.endswith("true within 0.01 deg")
 
 
 @pytest.mark.parametrize(
@@ -119,7 +128,52 @@ def test_the_budget_names_its_greatest(document: Document) -> None:
     budget = _sections(document)["Where the doubt comes from"]
     assert "of the mass: density of grey cast iron (90 %)" in budget.note
     assert "of the centre of mass: scan noise (100 %)" in budget.note
-    assert _lines(budget)["underside not seen"] == ("half range 0.30 kg", "centre 0 / 0 / 1.0 mm", "bracket")
+    # The greatest first, brackets last; of the centre the length of (0.2, 0.2, 0.3) mm: 0.41.
+    assert [(row.label, row.value, row.bounds) for row in budget.rows] == [
+        ("source, random if not named", "mass", "centre of mass"),
+        ("density of grey cast iron, declared", "0.20 kg, 90 %", "none"),
+        ("scan noise", "0.020 kg, 10 %", "0.41 mm, 100 %"),
+        ("underside not seen, bracket", "± 0.30 kg", "± 1.0 mm"),
+    ]
+
+
+def test_no_source_is_named_for_doubt_that_is_rounding(document: Document) -> None:
+    for row in document["budget"]:
+        if row["com_std_m"] is not None:
+            row["com_std_m"] = [0.0, 1e-16, 0.0]
+    budget = _sections(document)["Where the doubt comes from"]
+    assert "centre of mass" not in budget.note
+    assert [row.bounds for row in budget.rows[1:3]] == ["none", "none"]
+
+
+def test_tiny_shares_are_not_told_apart(document: Document) -> None:
+    document["budget"][1]["share_mass"] = 1.5e-35
+    assert _lines(_sections(document)["Where the doubt comes from"])["scan noise"][0] == "0.020 kg, under 0.1 %"
+
+
+def test_much_clutter_leads(document: Document) -> None:
+    assert not any("clutter" in row.label for row in rows(document)[0].rows)
+    document["removed"].append({"reason": "clutter", "points": 49560, "share": 0.413})
+    said = "41 % of the points were taken for clutter and not weighed: look at removed.ply."
+    assert said in [row.label for row in rows(document)[0].rows]
+
+
+def test_notes_begin_like_sentences_and_end_with_their_code(document: Document) -> None:
+    document["assumptions"] = [
+        {
+            "code": "hole-closed",
+            "text": "a hole is closed half-way between a membrane and a cone of the tangents there",
+        },
+        {"code": "polygons-fanned", "text": "a.ply: 3 faces were cut."},
+    ]
+    assert [row.label[:6] for row in _sections(document)["Assumed"].rows] == ["A hole", "a.ply:"]
+    lines = _printed(document).splitlines()
+    start = lines.index("Assumed")
+    assert lines[start + 1 : start + 4] == [
+        "  - A hole is closed half-way between a membrane and a cone of the tangents there",
+        "    [hole-closed]",
+        "  - a.ply: 3 faces were cut. [polygons-fanned]",
+    ]
 
 
 def test_quantities_are_echoed(document: Document) -> None:
@@ -145,8 +199,9 @@ def test_plain_and_within_the_width_when_piped(document: Document) -> None:
     [
         (148.6372, 148.1, 149.16, ("148.64 kg", "148.10 to 149.16 kg")),
         (1234.5, 667.4, 1801.6, ("1230 kg", "660 to 1810 kg")),  # two digits of 567 end at tens
-        (7.0, 7.0, 7.0, ("7 kg", "exact, as declared")),
-        (7.0, 7.0 - 1e-12, 7.0 + 1e-12, ("7 kg", "exact, as declared")),  # rounding, not doubt
+        (7.0, 7.0, 7.0, ("7 kg", "no doubt declared")),
+        (7.0, 7.0 - 1e-12, 7.0 + 1e-12, ("7 kg", "no doubt declared")),  # rounding, not doubt
+        (7.123456, None, None, ("7.123 kg", "no bound")),
         (7.0, 6.99, 7.2, ("7.00 kg", "6.99 to 7.20 kg")),
         (7.0, None, 7.2, ("7 kg", "no bound")),
         (0.5, 0.0, 1.0, ("0.50 kg", "0.00 to 1.00 kg")),
