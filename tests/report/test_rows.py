@@ -131,8 +131,8 @@ def test_the_budget_names_its_greatest(document: Document) -> None:
     # The greatest first, brackets last; of the centre the length of (0.2, 0.2, 0.3) mm: 0.41.
     assert [(row.label, row.value, row.bounds) for row in budget.rows] == [
         ("source, random if not named", "mass", "centre of mass"),
-        ("density of grey cast iron, declared", "0.20 kg, 90 %", "none"),
         ("scan noise", "0.020 kg, 10 %", "0.41 mm, 100 %"),
+        ("density of grey cast iron, declared", "0.20 kg, 90 %", "none"),
         ("underside not seen, bracket", "± 0.30 kg", "± 1.0 mm"),
     ]
 
@@ -162,7 +162,7 @@ def test_notes_begin_like_sentences_and_end_with_their_code(document: Document) 
     document["assumptions"] = [
         {
             "code": "hole-closed",
-            "text": "a hole is closed half-way between a membrane and a cone of the tangents there",
+            "text": "a hole is closed half-way between a membrane and a cone of tangents there",
         },
         {"code": "polygons-fanned", "text": "a.ply: 3 faces were cut."},
     ]
@@ -170,7 +170,7 @@ def test_notes_begin_like_sentences_and_end_with_their_code(document: Document) 
     lines = _printed(document).splitlines()
     start = lines.index("Assumed")
     assert lines[start + 1 : start + 4] == [
-        "  - A hole is closed half-way between a membrane and a cone of the tangents there",
+        "  - A hole is closed half-way between a membrane and a cone of tangents there",
         "    [hole-closed]",
         "  - a.ply: 3 faces were cut. [polygons-fanned]",
     ]
