@@ -49,12 +49,12 @@ class Job:
 POCKETS = (
     "The pockets under the beast's flanks and between its paws were not seen from any station. Each is bracketed by "
     "the membrane over it and by the tangents at its rim; the true pockets are deeper than either on one side, and "
-    "the centre of mass lies 0.4 mm (0.06 % of the length) beyond its bounds along y."
+    "the true centre of mass lies 0.3 to 0.4 mm (0.06 % of the length) beyond its bounds along y."
 )
 HOLES = (
     "The bottom of the side boss's blind bore and the neck under that boss were seen by no view: the surface closes "
     "them too early, by 0.26 and 0.20 % of the volume, and their brackets do not reach far enough. Both pull the "
-    "centre of mass towards the boss, a few um beyond its bounds along x."
+    "centre of mass towards the boss by 0.6 mm along x, to the very edge of its bounds: a few um in or out of them."
 )
 FLAT_STONE = {
     # The pockets (see above) hold 0.4 % too much and lack 0.6 %, at 0.1 to 0.2 m from the middle: 0.2 % of volume,
