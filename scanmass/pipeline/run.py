@@ -133,11 +133,11 @@ def _filled(shape: Shape, settings: Pipeline) -> tuple[DensityMap, tuple[Note, .
         name, density, notes = material.name, material.density(), material.assumptions()
     else:
         assert body.density is not None
-        name, density = "declared density", body.density
+        name, density = "one density", body.density
     solid = Note(
         "solid-throughout",
-        f"The object is taken to be {name} all through its outer surface and any cavity that was scanned: no scan "
-        "shows hollows, cores, voids or fillings inside.",
+        f"The object is taken to be {name} all through, but for cavities that were scanned: no scan shows hollows, "
+        "cores, voids or fillings inside.",
     )
     surface = shape.surface
     return fill_uniform("body", name, density, surface.vertices, surface.faces), (solid, *notes)

@@ -25,6 +25,7 @@ from scanmass.surface.from_mesh import from_mesh
 from scanmass.surface.mesh import FaceArray
 from scanmass.surface.reconstruct import reconstruct
 from scanmass.surface.refine import vertex_normals
+from scanmass.surface.shells import require_one_object
 from scanmass.surface.surface import Closure, Surface
 
 FloatArray = npt.NDArray[np.float64]
@@ -151,6 +152,8 @@ def _finished(
     warnings: tuple[Note, ...],
 ) -> Shape:
     """The shape with the declared scale applied about the object's own centre."""
+    if settings.clean.outliers == "auto":
+        require_one_object(surface.vertices, surface.faces)
     up_from = None if up is None else "declared" if settings.scan.up is not None else "support"
     if up is not None and contact is None:
         contact = float((surface.vertices @ up).min())

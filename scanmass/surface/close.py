@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -10,7 +10,8 @@ from scipy.spatial import cKDTree
 
 from scanmass.cloud.cloud import Cloud
 from scanmass.errors import Declined, Note
-from scanmass.geometry.edges import count_edges, shell_labels
+from scanmass.geometry.edges import count_edges, parted, shell_labels
+from scanmass.geometry.loops import rim_edges
 from scanmass.geometry.planes import plane_axes
 from scanmass.geometry.polyhedron import face_areas
 from scanmass.progress import Progress, silent
@@ -81,19 +82,35 @@ def close(
     require_declared(underside, hollow_depth, up)
     progress("close", 0, 3)
     distance, pitch = seen_vertices(mesh, cloud)
-    inferred = inferred_faces(mesh, distance)
-    require_all_round(mesh, inferred, up)
+    require_all_round(mesh, inferred_faces(mesh, distance), up)
     progress("close", 1, 3)
     notes: list[Note] = []
     base = standing_base(underside, hollow_depth, up, contact_height, cloud.points, float(np.median(pitch)), notes)
-    below = None
-    if underside != "seen" and base.up is not None and base.lowest is not None:
-        below = (mesh.vertices @ base.up < base.lowest - pitch) & (distance > 1.0)
-    regions = gaps(mesh, distance, pitch, below)
+    inferred, regions = _missed(mesh, cloud, base)
+    bubbles = [region for region in regions if len(rim_edges(mesh.faces, region)) == 0]
+    if bubbles and not np.any(bubbles, axis=0).all():
+        mesh = _without(mesh, bubbles)
+        inferred, regions = _missed(mesh, cloud, base)
     progress("close", 2, 3)
     surface = close_gaps(mesh, regions, inferred, base, notes, "points")
     progress("close", 3, 3)
     return surface
+
+
+def _missed(mesh: Mesh, cloud: Cloud, base: Base) -> tuple[Mask, list[Mask]]:
+    """Faces (m,) with no sample near, and the gaps to close."""
+    distance, pitch = seen_vertices(mesh, cloud)
+    below = None
+    if base.underside != "seen" and base.up is not None and base.lowest is not None:
+        below = (mesh.vertices @ base.up < base.lowest - pitch) & (distance > 1.0)
+    return inferred_faces(mesh, distance), gaps(mesh, distance, pitch, below)
+
+
+def _without(mesh: Mesh, bubbles: list[Mask]) -> Mesh:
+    """The mesh without whole shells on which next to nothing was seen: the reconstruction's own."""
+    text = f"{len(bubbles)} bubble(s) of the reconstruction on which next to no point lies were dropped"
+    kept = mesh.keep(~np.any(bubbles, axis=0))
+    return replace(kept, notes=(*kept.notes, Note("bubbles-dropped", text)))
 
 
 def require_declared(underside: Underside, hollow_depth: float | None, up: FloatArray | None) -> None:
@@ -142,8 +159,12 @@ def close_gaps(
     whole, spanned = assembled(mesh, spans)
     spanned[: len(inferred)] |= inferred
     edges = count_edges(whole.faces)
-    if not edges.closed:
-        raise Declined(f"closing the surface left {edges.open} open edges", allowed="scan what was missed")
+    if not edges.balanced:
+        text = f"closing the surface left {edges.open} open and {edges.clashing} clashing edges"
+        raise Declined(text, allowed="scan what was missed")
+    # Sheets that touch along an edge are parted: the faces stay where they are.
+    vertices, faces = parted(whole.vertices, whole.faces)
+    whole = replace(whole, vertices=vertices, faces=faces)
     if whole.moments[0] <= 0:
         raise Declined("the closed surface has no volume above zero", allowed="check surface.underside and scan.up")
     return Surface(

@@ -18,6 +18,9 @@ base, miss 0.33 (without up no scan can tell them apart); a cube without its bas
 DOWNWARD = -0.3
 """With a known up, directions that look up from below this (sine) are the underside's, and left to its closure."""
 LEAST_UNSEEN_ABOVE = 0.25
+MOST_AREA, MOST_AREA_ABOVE = 0.28, 0.15
+"""Shares of the closed surface that may be inferred: of all of it without up, and beside and above the underside with
+it. One view of half a round body is closed by a lid of a third of its area, and looks complete from most sides."""
 
 
 def sphere_directions(n: int = DIRECTIONS) -> FloatArray:
@@ -56,4 +59,15 @@ def require_all_round(mesh: Mesh, inferred: npt.NDArray[np.bool_], up: FloatArra
             f"the scan is one-sided: {share:.0%} of the directions beside and above the object look at surface "
             "that was not seen",
             allowed="scan the other sides too: a declared underside closes the object from below only",
+        )
+    area, normals = face_areas(mesh.vertices, mesh.faces)
+    counted = inferred if up is None else inferred & (normals @ up > -0.5)
+    guessed = float(area[counted].sum() / area.sum())
+    if guessed > (MOST_AREA if up is None else MOST_AREA_ABOVE):
+        raise Declined(
+            f"the scan is {'one-sided' if share > 0.1 else 'patchy'}: {guessed:.0%} of the surface"
+            f"{'' if up is None else ' beside and above'} was not seen, "
+            f"and {share:.0%} of all directions look mostly at that",
+            allowed="scan the other sides too"
+            + (", or declare scan.up and surface.underside (flat or hollow)" if up is None else ""),
         )

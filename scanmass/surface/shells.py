@@ -15,6 +15,8 @@ from scanmass.surface.winding import winding_numbers
 PROBES = 24
 INSIDE, OUTSIDE = 0.75, 0.25
 MOST_SHELLS = 200
+SIMILAR = 0.5
+"""Share of the largest shell's size from which another that lies apart is an object of its own."""
 
 
 @dataclass(frozen=True)
@@ -73,6 +75,31 @@ def settled(vertices: FloatArray, faces: FaceArray, *, known: bool = True) -> Sh
         text = f"{overlaps} pair(s) of shells overlap: what they share counts twice"
         warnings.append(Note("shells-overlap", text))
     return Shells(turned, count, int((depth % 2 == 1).sum()), tuple(assumptions), tuple(warnings))
+
+
+def require_one_object(vertices: FloatArray, faces: FaceArray) -> None:
+    """Raise Declined where two solid shells of similar size lie apart: which of them is the object?
+
+    Cavities, small loose pieces, and shells whose boxes meet (parts of an assembly) pass.
+    """
+    count, labels = shell_labels(faces)
+    if count == 1:
+        return
+    parts = [faces[labels == k] for k in range(count)]
+    solid = [part for part in parts if polyhedron_moments(vertices, part)[0] > 0]
+    boxes = [(vertices[part].min(axis=(0, 1)), vertices[part].max(axis=(0, 1))) for part in solid]
+    sizes = np.array([float((high - low).max()) for low, high in boxes])
+    order = np.argsort(-sizes)
+    first = boxes[order[0]]
+    for k in order[1:]:
+        low, high = boxes[k]
+        apart = bool(np.any(low > first[1]) or np.any(high < first[0]))
+        if apart and sizes[k] > SIMILAR * sizes[order[0]]:
+            raise Declined(
+                f"the scan holds several separate objects of similar size ({1000 * sizes[order[0]]:.4g} mm and "
+                f"{1000 * sizes[k]:.4g} mm)",
+                allowed="crop the scan to one object, or give one file an object",
+            )
 
 
 def _nesting(vertices: FloatArray, parts: list[FaceArray]) -> tuple[np.ndarray, int]:

@@ -15,7 +15,7 @@ from scanmass.geometry.moments import centroid, translated
 from scanmass.surface.surface import Surface
 from scanmass.uncertainty import noise, patches
 from scanmass.uncertainty.axes import PrincipalAxes
-from scanmass.uncertainty.bracket import Bound, axes_over, merged
+from scanmass.uncertainty.bracket import Bound, at_least_nothing, axes_over, merged
 from scanmass.uncertainty.budget import BudgetRow, bracket_row, budget
 from scanmass.uncertainty.declared import Declared, field_rows, from_declaration, unknown, upper_bound
 from scanmass.uncertainty.detail import detail_rows
@@ -124,8 +124,8 @@ def bound(
     covariance = None if first.com.std is None else _covariance(first)
     return Bounds(
         level=level,
-        volume=merged([f.volume for f in figures.values()]),
-        mass=merged([f.mass for f in figures.values()]),
+        volume=at_least_nothing(merged([f.volume for f in figures.values()])),
+        mass=at_least_nothing(merged([f.mass for f in figures.values()])),
         com=merged([f.com for f in figures.values()]),
         com_covariance=covariance,
         region=None if covariance is None else region(first.com.value, covariance, level, _least_degrees(first.com)),

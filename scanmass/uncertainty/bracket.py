@@ -54,6 +54,15 @@ def merged(shapes: Sequence[Estimate]) -> Bound:
     )
 
 
+def at_least_nothing(bound: Bound) -> Bound:
+    """The bound of a figure that cannot be negative, its lower ends cut at zero."""
+
+    def cut(end: FloatArray | None) -> FloatArray | None:
+        return None if end is None else np.maximum(end, 0.0)
+
+    return replace(bound, low=cut(bound.low), random_low=cut(bound.random_low))
+
+
 def axes_over(figures: Sequence[ShapeFigures]) -> PrincipalAxes:
     """The first shape's axes, each cone wide enough for the cone of every other shape."""
     first = figures[0].axes

@@ -221,3 +221,11 @@ def test_thin_views_get_fewer_patches(surface_of, cloud_of, on_sphere):
     # 9000 / (12 x 3); with a thousand patches hardly one would hold three samples of each view.
     assert len(found.patches.areas) == pytest.approx(250, abs=5)
     assert found.noise.basis == "views"
+
+
+def test_a_mass_is_never_below_nothing(surface_of):
+    box = surface_of(trimesh.creation.box((1, 1, 0.02)))
+    found = run(box, declared=Declared(0.012, 1.0), densities=[Figure.exact(1000.0)])
+    assert float(found.mass.low) == 0.0
+    assert float(found.volume.random_low) == 0.0
+    assert float(found.mass.high) > float(found.mass.value)
