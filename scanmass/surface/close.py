@@ -82,10 +82,10 @@ def close(
     require_declared(underside, hollow_depth, up)
     progress("close", 0, 3)
     distance, pitch = seen_vertices(mesh, cloud)
-    require_all_round(mesh, inferred_faces(mesh, distance), up)
-    progress("close", 1, 3)
     notes: list[Note] = []
     base = standing_base(underside, hollow_depth, up, contact_height, cloud.points, float(np.median(pitch)), notes)
+    require_all_round(mesh, inferred_faces(mesh, distance), up, base.level)
+    progress("close", 1, 3)
     inferred, regions = _missed(mesh, cloud, base)
     bubbles = [region for region in regions if len(rim_edges(mesh.faces, region)) == 0]
     if bubbles and not np.any(bubbles, axis=0).all():

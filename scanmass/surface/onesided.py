@@ -18,6 +18,8 @@ base, miss 0.33 (without up no scan can tell them apart); a cube without its bas
 DOWNWARD = -0.3
 """With a known up, directions that look up from below this (sine) are the underside's, and left to its closure."""
 LEAST_UNSEEN_ABOVE = 0.25
+LOW = 0.05
+"""Share of the height above the floor that still is the underside's."""
 MOST_AREA, MOST_AREA_ABOVE = 0.28, 0.15
 """Shares of the closed surface that may be inferred: of all of it without up, and beside and above the underside with
 it. One view of half a round body is closed by a lid of a third of its area, and looks complete from most sides."""
@@ -46,8 +48,13 @@ def unseen_share(mesh: Mesh, inferred: npt.NDArray[np.bool_], up: FloatArray | N
     return float(np.mean(seen < HALF * total))
 
 
-def require_all_round(mesh: Mesh, inferred: npt.NDArray[np.bool_], up: FloatArray | None) -> None:
-    """Raise Declined where the scan saw the object from too few sides to close it."""
+def require_all_round(
+    mesh: Mesh, inferred: npt.NDArray[np.bool_], up: FloatArray | None, level: float | None = None
+) -> None:
+    """Raise Declined where the scan saw the object from too few sides to close it.
+
+    What the reconstruction made below ``up . r = level``, where the object stands, is the underside's.
+    """
     share = unseen_share(mesh, inferred, up)
     if up is None and share > LEAST_UNSEEN:
         raise Declined(
@@ -61,8 +68,12 @@ def require_all_round(mesh: Mesh, inferred: npt.NDArray[np.bool_], up: FloatArra
             allowed="scan the other sides too: a declared underside closes the object from below only",
         )
     area, normals = face_areas(mesh.vertices, mesh.faces)
-    counted = inferred if up is None else inferred & (normals @ up > -0.5)
-    guessed = float(area[counted].sum() / area.sum())
+    beside = np.ones(len(area), np.bool_)
+    if up is not None:
+        heights = mesh.vertices[mesh.faces].mean(axis=1) @ up
+        floor = heights.min() if level is None else level
+        beside = (normals @ up > -0.5) & (heights > floor + LOW * (heights.max() - floor))
+    guessed = float(area[beside & inferred].sum() / area[beside].sum())
     if guessed > (MOST_AREA if up is None else MOST_AREA_ABOVE):
         raise Declined(
             f"the scan is {'one-sided' if share > 0.1 else 'patchy'}: {guessed:.0%} of the surface"
