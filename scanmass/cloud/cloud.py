@@ -72,7 +72,7 @@ class Cloud:
         return float(np.ptp(self.points, axis=0).max())
 
 
-REASONS = ("support plane", "turntable", "clutter", "grid edge", "outlier", "residual")
+REASONS = ("support plane", "turntable", "clutter", "grid edge", "outlier")
 """Why a point was removed; ``Removed.reason`` indexes this."""
 
 

@@ -115,7 +115,7 @@ def result(document: dict[str, Any]) -> MassResult:
     removed = Removed(
         vertices[:3] + 1.0,
         np.array([1, 5, 7], np.int32),
-        np.array([REASONS.index(r) for r in ("outlier", "support plane", "residual")], np.uint8),
+        np.array([REASONS.index(r) for r in ("outlier", "support plane", "clutter")], np.uint8),
     )
     rng = np.random.default_rng(1)
     replicates = {"volume_m3": rng.normal(1e-3, 1e-5, 50), "mass_kg": rng.normal(7, 0.2, 50)}

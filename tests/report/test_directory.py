@@ -140,7 +140,7 @@ def test_removed_points_keep_their_reason(result: MassResult, tmp_path: Path) ->
     assert all(f"comment reason {number}: {name}\n" in header for number, name in named.items())
     raw = trimesh.load(path).metadata["_ply_raw"]["vertex"]["data"]
     removed = result.products.removed
-    assert [named[int(r)] for r in raw["reason"]] == ["outlier", "support plane", "residual"]
+    assert [named[int(r)] for r in raw["reason"]] == ["outlier", "support plane", "clutter"]
     np.testing.assert_array_equal(raw["count"], removed.count)
     np.testing.assert_array_equal(raw["x"], removed.points[:, 0])
 
