@@ -162,10 +162,22 @@ def _products(shape: Shape, filled: DensityMap, bounds: Bounds) -> Products:
         "residual_variances_m2": patches.within,
         "view_cosines": patches.towards,
         "part_moments": bounds.parts.moments,
+        **_samples(shape),
     }
     for term in bounds.terms:
         state[f"rows of {term.source}"] = term.rows
     return Products(surface, removed, cells, filled.density_kg_m3, _columns(bounds, shape.origin), state)
+
+
+def _samples(shape: Shape) -> dict[str, npt.NDArray[Any]]:
+    """Where each view sampled the object, about ``frame_origin_m``, and where its scanner stood in the scan's frame."""
+    cloud = shape.cloud
+    return {
+        "samples_m": np.empty((0, 3), np.float32) if cloud is None else cloud.points.astype(np.float32),
+        "sample_views": np.empty(0, np.int32) if cloud is None else cloud.view,
+        "sample_counts": np.empty(0, np.int32) if cloud is None else cloud.count,
+        "view_scanners_m": np.empty((0, 3)) if cloud is None else cloud.scanners + shape.origin,
+    }
 
 
 def _columns(bounds: Bounds, origin: FloatArray) -> dict[str, FloatArray]:

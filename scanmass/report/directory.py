@@ -25,6 +25,8 @@ FILES = (
     "replicates.parquet",
     "state.npz",
     "report.html",
+    "rehearsal.json",
+    "rehearsal.jsonl",
 )
 """All that a result folder may hold."""
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
@@ -10,6 +11,7 @@ import numpy as np
 import numpy.typing as npt
 
 from scanmass.cloud.cloud import REASONS, Removed
+from scanmass.errors import UserFault
 from scanmass.surface.surface import Surface
 
 SEEN = (176, 184, 192)
@@ -22,6 +24,8 @@ REASON_COLOURS = ((120, 120, 120), (31, 119, 180), (148, 103, 189), (188, 189, 3
 _TYPES = {"<f8": "double", "<i4": "int", "|u1": "uchar"}
 _PLACE = [("x", "<f8"), ("y", "<f8"), ("z", "<f8")]
 _COLOUR = [("red", "u1"), ("green", "u1"), ("blue", "u1")]
+_FACE = [("corners", "u1"), ("index", "<i4", (3,)), ("inferred", "u1")]
+_WHY = [("reason", "u1"), ("count", "<i4")]
 
 
 def write_surface(path: Path, surface: Surface) -> None:
@@ -34,7 +38,7 @@ def write_surface(path: Path, surface: Surface) -> None:
     loose[surface.faces[surface.inferred].ravel()] = True
     vertices = np.empty(len(surface.vertices), [*_PLACE, *_COLOUR])
     _fill(vertices, surface.vertices, np.where(loose[:, None], INFERRED, SEEN))
-    faces = np.empty(len(surface.faces), [("corners", "u1"), ("index", "<i4", (3,)), ("inferred", "u1")])
+    faces = np.empty(len(surface.faces), _FACE)
     faces["corners"] = 3
     faces["index"] = surface.faces
     faces["inferred"] = surface.inferred
@@ -54,7 +58,7 @@ def write_removed(path: Path, removed: Removed) -> None:
 
     The header names the reasons: ``comment reason 4: outlier``.
     """
-    points = np.empty(len(removed.points), [*_PLACE, *_COLOUR, ("reason", "u1"), ("count", "<i4")])
+    points = np.empty(len(removed.points), [*_PLACE, *_COLOUR, *_WHY])
     _fill(points, removed.points, np.array(REASON_COLOURS)[removed.reason])
     points["reason"] = removed.reason
     points["count"] = removed.count
@@ -64,6 +68,71 @@ def write_removed(path: Path, removed: Removed) -> None:
         *_element("vertex", points),
     ]
     _write(path, header, [points])
+
+
+@dataclass(frozen=True)
+class Drawn:
+    """A surface as ``write_surface`` wrote it: ``vertices`` (n, 3) metres, ``faces`` (m, 3), ``inferred`` (m,)."""
+
+    vertices: npt.NDArray[np.float64]
+    faces: npt.NDArray[np.int64]
+    inferred: npt.NDArray[np.bool_]
+
+
+def read_surface(path: Path) -> Drawn:
+    """The surface in a file of :func:`write_surface`.
+
+    Raises
+    ------
+    UserFault
+        If the file was written by something else, or changed since.
+    """
+    (n, m), at, data = _opened(path, "vertex", "face")
+    try:
+        vertices = np.frombuffer(data, [*_PLACE, *_COLOUR], n, at)
+        faces = np.frombuffer(data, _FACE, m, at + vertices.nbytes)
+    except ValueError as fault:
+        raise _foreign(path) from fault
+    if (faces["corners"] != 3).any() or (faces["index"] < 0).any() or (faces["index"] >= n).any():
+        raise _foreign(path)
+    places = np.stack([vertices[axis] for axis in "xyz"], axis=1)
+    return Drawn(places, faces["index"].astype(np.int64), faces["inferred"] != 0)
+
+
+def read_removed(path: Path) -> Removed:
+    """The samples in a file of :func:`write_removed`.
+
+    Raises
+    ------
+    UserFault
+        If the file was written by something else, or changed since.
+    """
+    (n,), at, data = _opened(path, "vertex")
+    try:
+        points = np.frombuffer(data, [*_PLACE, *_COLOUR, *_WHY], n, at)
+    except ValueError as fault:
+        raise _foreign(path) from fault
+    if (points["reason"] >= len(REASONS)).any():
+        raise _foreign(path)
+    places = np.stack([points[axis] for axis in "xyz"], axis=1)
+    return Removed(places, points["count"].astype(np.int32), points["reason"].copy())
+
+
+def _opened(path: Path, *elements: str) -> tuple[tuple[int, ...], int, bytes]:
+    """How many of each element, where the data begin, and all bytes of a file that this module wrote."""
+    data = path.read_bytes()
+    head, mark, _ = data[:4096].partition(b"end_header\n")
+    lines = head.decode("latin-1").splitlines()
+    counts = [line.split()[1:] for line in lines if line.startswith("element ")]
+    if not mark or lines[2:3] == [] or not lines[2].startswith("comment scanmass:"):
+        raise _foreign(path)
+    if tuple(name for name, _ in counts) != elements:
+        raise _foreign(path)
+    return tuple(int(count) for _, count in counts), len(head) + len(mark), data
+
+
+def _foreign(path: Path) -> UserFault:
+    return UserFault("this was not written by scanmass, or was changed", file=path, allowed="measure the scan again")
 
 
 def _fill(table: npt.NDArray[Any], places: npt.NDArray[np.float64], colours: npt.NDArray[Any]) -> None:

@@ -10,9 +10,12 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-STATE_VERSION = 1
-"""In every ``state.npz`` as ``state_version``: a reader refuses one it does not know."""
+from scanmass.errors import UserFault
 
+STATE_VERSION = 2
+"""In every ``state.npz`` as ``state_version``: a reader refuses one it does not know. 2: samples, scanner places."""
+
+_AGAIN = "measure the scan again with this version, with --out"
 _ZIP_EPOCH = (1980, 1, 1, 0, 0, 0)
 
 
@@ -49,3 +52,23 @@ def write_state(path: Path, arrays: Mapping[str, npt.NDArray[Any]]) -> None:
             entry.compress_type = zipfile.ZIP_DEFLATED
             with archive.open(entry, "w", force_zip64=True) as file:
                 np.lib.format.write_array(file, np.asanyarray(members[name]), allow_pickle=False)
+
+
+def read_state(path: Path) -> dict[str, npt.NDArray[Any]]:
+    """The arrays of a ``state.npz``.
+
+    Raises
+    ------
+    UserFault
+        If the file is none, or of a version that this scanmass does not know.
+    """
+    try:
+        with np.load(path, allow_pickle=False) as archive:
+            arrays = {name: archive[name] for name in archive.files}
+    except (ValueError, EOFError, zipfile.BadZipFile, AttributeError) as fault:
+        raise UserFault("this is not the state of a scanmass result", file=path, allowed=_AGAIN) from fault
+    found = int(arrays.get("state_version", 0))
+    if found != STATE_VERSION:
+        seen = f"the state is of version {found}, and this scanmass reads {STATE_VERSION}"
+        raise UserFault(seen, file=path, allowed=_AGAIN)
+    return arrays

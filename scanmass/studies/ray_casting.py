@@ -4,16 +4,26 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Protocol
 
 import numpy as np
 import numpy.typing as npt
 
 from scanmass import libraries
-from scanmass.studies.bodies import Body
 
 FloatArray = npt.NDArray[np.float64]
+FaceArray = npt.NDArray[np.int64]
 _SHARPEST_GRAZE = 1e-3
 """|cos| of incidence below which the double-precision hit is not trusted over the tree's own."""
+
+
+class Skin(Protocol):
+    """What rays can hit: ``vertices`` (n, 3) in metres and ``faces`` (m, 3)."""
+
+    @property
+    def vertices(self) -> FloatArray: ...
+    @property
+    def faces(self) -> FaceArray: ...
 
 
 @dataclass(frozen=True)
@@ -41,7 +51,7 @@ class Scene:
     [4.0]
     """
 
-    def __init__(self, bodies: Sequence[Body]) -> None:
+    def __init__(self, bodies: Sequence[Skin]) -> None:
         o3d = libraries.open3d()
 
         self.bodies = tuple(bodies)
@@ -81,3 +91,29 @@ class Scene:
             distance[mine] = np.where(trusted, exact, distance[mine])
             cosine[mine] = np.abs(towards)
         return Hits(distance, part, cosine)
+
+    def nearest(self, points: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """The nearest place of any body to each of ``points`` (n, 3), and the unit normal there: (n, 3), (n, 3).
+
+        The tree works in single precision and says which triangle is nearest; the place is then moved onto that
+        triangle's plane in double precision.
+
+        >>> from scanmass.studies.bodies import box
+        >>> scene = Scene([box("crate", (2.0, 2.0, 2.0))])
+        >>> [row.round(6).tolist() for row in scene.nearest(np.array([[0.2, 0.1, 5.0]]))]
+        [[[0.2, 0.1, 1.0]], [[0.0, 0.0, 1.0]]]
+        """
+        o3d = libraries.open3d()
+
+        answer = self._tree.compute_closest_points(o3d.core.Tensor(points.astype(np.float32)), nthreads=1)
+        places = answer["points"].numpy().astype(np.float64)
+        which, triangle = answer["geometry_ids"].numpy(), answer["primitive_ids"].numpy()
+        normals = np.zeros_like(places)
+        for number, corners in enumerate(self._corners):
+            mine = np.flatnonzero(which == number)
+            a, b, c = np.swapaxes(corners[triangle[mine]], 0, 1)
+            normal = np.cross(b - a, c - a)
+            normal /= np.maximum(np.linalg.norm(normal, axis=1, keepdims=True), np.finfo(float).tiny)
+            places[mine] += np.einsum("ij,ij->i", a - places[mine], normal)[:, None] * normal
+            normals[mine] = normal
+        return places, normals

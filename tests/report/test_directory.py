@@ -19,7 +19,7 @@ from scanmass.pipeline.record import MassResult
 from scanmass.report import directory
 from scanmass.report.directory import write
 from scanmass.report.schema import InvalidResult, validate
-from scanmass.report.tables import write_replicates, write_state
+from scanmass.report.tables import STATE_VERSION, write_replicates, write_state
 from scanmass.report.voxels import write_cells
 
 
@@ -30,7 +30,7 @@ def _bytes(folder: Path) -> dict[str, str]:
 def test_the_files_of_the_contract(result: MassResult, tmp_path: Path) -> None:
     write(result, tmp_path / "deep" / "out")
     out = tmp_path / "deep" / "out"
-    assert sorted(_bytes(out)) == sorted(set(directory.FILES) - {"report.html"})
+    assert sorted(_bytes(out)) == sorted(set(directory.FILES) - {"report.html", "rehearsal.json", "rehearsal.jsonl"})
     validate(json.loads((out / "result.json").read_text("utf-8")))
     assert (out / "result.json").read_text("utf-8") == result.to_json()
     assert json.loads((out / "run.json").read_text("utf-8"))["host"] == "bench"
@@ -228,7 +228,7 @@ def test_replicates_are_read_back(result: MassResult, tmp_path: Path) -> None:
 def test_state_holds_no_pickle(result: MassResult, tmp_path: Path) -> None:
     write(result, tmp_path / "out")
     with np.load(tmp_path / "out" / "state.npz", allow_pickle=False) as state:
-        assert int(state["state_version"]) == 1
+        assert int(state["state_version"]) == STATE_VERSION
         np.testing.assert_array_equal(state["patch_of_face"], np.arange(12))
     with pytest.raises(ValueError, match="pickle"):
         write_state(tmp_path / "odd.npz", {"objects": np.array([{}], dtype=object)})
