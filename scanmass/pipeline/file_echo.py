@@ -10,7 +10,8 @@ from dataclasses import dataclass
 
 from scanmass.doubt import Figure, Spread
 from scanmass.materials import table
-from scanmass.pipeline.models import Block, Body, Hollow, Pipeline
+from scanmass.pipeline.models import Body, Hollow, Pipeline
+from scanmass.pipeline.models_block import Block
 from scanmass.pipeline.models_quantities import Direction, Length, Level, MaterialName, Place, Quantity
 from scanmass.pipeline.models_read import reader_of
 

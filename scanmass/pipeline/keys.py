@@ -9,7 +9,8 @@ from typing import get_args
 
 from pydantic.fields import FieldInfo
 
-from scanmass.pipeline.models import Block, Body, Hollow, Pipeline
+from scanmass.pipeline.models import Body, Hollow, Pipeline
+from scanmass.pipeline.models_block import Block
 from scanmass.pipeline.models_quantities import Place
 from scanmass.pipeline.models_read import reader_of
 

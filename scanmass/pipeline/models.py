@@ -9,11 +9,12 @@ import math
 from collections.abc import Mapping
 from typing import Annotated, Any, Literal, Self
 
-from pydantic import BaseModel, ConfigDict, Field, GetCoreSchemaHandler, PrivateAttr, model_validator
+from pydantic import Field, GetCoreSchemaHandler, PrivateAttr, model_validator
 from pydantic_core import CoreSchema, core_schema
 
 from scanmass.doubt import Figure
 from scanmass.errors import Note
+from scanmass.pipeline.models_block import Block
 from scanmass.pipeline.models_quantities import (
     Direction,
     Length,
@@ -39,21 +40,6 @@ LATER = {
     "decisions": "decisions are",
 }
 """Keys of the contract that this version refuses in its own words, rather than as unknown."""
-
-
-class Block(BaseModel):
-    """A block of keys; a block without any key is one of defaults."""
-
-    model_config = ConfigDict(frozen=True, extra="forbid", arbitrary_types_allowed=True)
-
-    @model_validator(mode="before")
-    @classmethod
-    def _is_block(cls, given: Any) -> Any:
-        if given is None or given == "":
-            return {}
-        if not isinstance(given, Mapping):
-            raise refusal(shown(given), f"allowed: a block of keys ({', '.join(cls.model_fields)})")
-        return given
 
 
 class Object(Block):

@@ -17,7 +17,7 @@ from scanmass.doubt import Figure
 from scanmass.errors import Note
 from scanmass.materials import table
 from scanmass.pipeline.file import effective_text, load, quantities, sha256
-from scanmass.pipeline.models import Block
+from scanmass.pipeline.models_block import Block
 from scanmass.pipeline.models_quantities import Quantity
 
 PIPELINES = sorted((Path(__file__).parents[2] / "pipelines").glob("*.yaml"))
