@@ -18,6 +18,7 @@ from scanmass.pipeline.shape import Shape
 from scanmass.scans.scan import Scan
 from scanmass.uncertainty.bounds import Bounds
 from scanmass.uncertainty.document import as_document
+from scanmass.uncertainty.reading import Reading
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -31,10 +32,11 @@ def assemble(
     difference: RoutesDifference,
     bounds: Bounds,
     notes: tuple[Note, ...],
+    reading: Reading,
 ) -> dict[str, Any]:
     """``result.json`` as a dict, in the contract's order."""
     found = as_document(bounds)
-    scale = settings.scan.scale
+    scale = reading.declared.scale
     points = _scaled_places(settings, shape)
     center = document.moved_center(found["center_of_mass_m"], shape.origin)
     center["offsets"] = offsets(bounds, points, scale)
@@ -57,7 +59,7 @@ def assemble(
         "scans": document.scan_rows(scans, shape.cloud),
         "removed": document.removed_rows(shape.removed, total),
         "surface": document.surface_block(shape.surface),
-        "noise": found["noise"],
+        "noise": found["noise"] | {"declared_in": _declared_in(bounds, reading)},
         "volume_m3": found["volume_m3"],
         "mass_kg": found["mass_kg"],
         "center_of_mass_m": center,
@@ -67,10 +69,17 @@ def assemble(
         "checks": document.checks_block(difference),
         "budget": found["budget"],
         "assumptions": document.note_rows(
-            [*settings.assumptions, *said, *shape.assumptions, *notes, *bounds.assumptions]
+            [*settings.assumptions, *said, *shape.assumptions, *notes, *reading.assumptions, *bounds.assumptions]
         ),
-        "warnings": document.note_rows([*warned, *shape.warnings, *bounds.warnings]),
+        "warnings": document.note_rows([*warned, *shape.warnings, *reading.warnings, *bounds.warnings]),
     }
+
+
+def _declared_in(bounds: Bounds, reading: Reading) -> str | None:
+    """Where a declared noise was read, None where the noise is not declared."""
+    if bounds.noise.basis != "declared":
+        return None
+    return "certificate" if reading.declared.noise_from_certificate else "scan.noise_std"
 
 
 def _scaled_places(settings: Pipeline, shape: Shape) -> dict[str, FloatArray]:

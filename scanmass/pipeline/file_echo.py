@@ -12,6 +12,7 @@ from scanmass.doubt import Figure, Spread
 from scanmass.materials import table
 from scanmass.pipeline.models import Body, Hollow, Pipeline
 from scanmass.pipeline.models_block import Block
+from scanmass.pipeline.models_certificate import GrowingLimit
 from scanmass.pipeline.models_quantities import Direction, Length, Level, MaterialName, Place, Quantity
 from scanmass.pipeline.models_read import reader_of
 
@@ -62,6 +63,8 @@ def _rows(block: Block, prefix: str) -> Iterator[QuantityRow]:
             yield _row(key, f"{value}: {Quantity('density').write(figure)}", figure)
         elif isinstance(reader, Direction):
             yield QuantityRow(key, reader.write(value), value, None, None, None, "exact")
+        elif isinstance(reader, GrowingLimit):
+            yield _row(key, reader.write(value), Figure.exact(value.constant))
         elif isinstance(reader, Quantity | Length | Level):
             figure = value if isinstance(value, Figure) else Figure.exact(value)
             yield _row(key, reader.write(value), figure)

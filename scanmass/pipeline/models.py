@@ -15,6 +15,7 @@ from pydantic_core import CoreSchema, core_schema
 from scanmass.doubt import Figure
 from scanmass.errors import Note
 from scanmass.pipeline.models_block import Block
+from scanmass.pipeline.models_certificate import CertificateBlock
 from scanmass.pipeline.models_quantities import (
     Direction,
     Length,
@@ -87,11 +88,12 @@ class Scan(Block):
         "where each point errs by itself. Round up.",
         examples=["25 mm"],
     )
+    certificate: CertificateBlock = Field(default=CertificateBlock())
 
     @model_validator(mode="after")
     def _noise_has_its_size(self) -> Self:
-        if self.noise_length is not None and self.noise_std is None:
-            raise refusal("given without noise_std", "declare noise_std too", "noise_length")
+        if self.noise_length is not None and self.noise_std is None and self.certificate.PF is None:
+            raise refusal("given without noise_std", "declare noise_std too, or certificate.PF", "noise_length")
         return self
 
 

@@ -38,7 +38,7 @@ class Quantity(Reader):
 
     def write(self, value: Any) -> str:
         unit = units.system("metric")[self.dimension].replace("%", "")
-        return _faithful(value, self.dimension, (unit,))
+        return faithful(value, self.dimension, (unit,))
 
 
 @dataclass(frozen=True)
@@ -62,7 +62,7 @@ class Length(Reader):
         return _plain(text, "length", self.rule, above_zero=self.above_zero)
 
     def write(self, value: Any) -> str:
-        return str(value) if isinstance(value, str) else _faithful(Figure.exact(value), "length", ("mm", "m"))
+        return str(value) if isinstance(value, str) else faithful(Figure.exact(value), "length", ("mm", "m"))
 
 
 @dataclass(frozen=True)
@@ -79,12 +79,12 @@ class Level(Reader):
     def read(self, text: str, notes: list[Note]) -> float:
         level = _plain(text, "ratio", self.rule, above_zero=True)
         if not self.least <= level <= self.most:
-            fix = f", did you mean '{text} %'?" if self.least <= level / 100 <= self.most else ""
+            fix = f" (did you mean '{text} %'?)" if self.least <= level / 100 <= self.most else ""
             raise refusal(shown(text) + fix, self.rule)
         return level
 
     def write(self, value: Any) -> str:
-        return _faithful(Figure.exact(value), "ratio", ("%", ""))
+        return faithful(Figure.exact(value), "ratio", ("%", ""))
 
 
 @dataclass(frozen=True)
@@ -158,7 +158,7 @@ def _number(value: float) -> str:
     return repr(value + 0.0).removesuffix(".0")
 
 
-def _faithful(figure: Figure, dimension: str, names: tuple[str, ...]) -> str:
+def faithful(figure: Figure, dimension: str, names: tuple[str, ...]) -> str:
     """The figure as text: rounded as a report shows it where that reads back to the same figure, else to all digits."""
     for unit in names:
         text = units.show(figure, unit)

@@ -39,11 +39,11 @@ def shown(value: Any) -> str:
 
 
 def meant(word: str, allowed: Iterable[str], cutoff: float = 0.6) -> str:
-    """``", did you mean 'NAME'?"`` where one of the allowed words is close, else nothing."""
+    """``" (did you mean 'NAME'?)"`` where one of the allowed words is close, else nothing."""
     names = {name.lower(): name for name in allowed}
     folded = word.strip().lower().replace("-", "_")
     close = difflib.get_close_matches(folded, names, n=1, cutoff=cutoff)
-    return f", did you mean '{names[close[0]]}'?" if close else ""
+    return f" (did you mean '{names[close[0]]}'?)" if close else ""
 
 
 @dataclass(frozen=True)

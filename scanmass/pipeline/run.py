@@ -30,6 +30,7 @@ from scanmass.scans.load import load as load_scans
 from scanmass.scans.scan import Scan
 from scanmass.uncertainty.bounds import Bounds, bound
 from scanmass.uncertainty.declared import Declared
+from scanmass.uncertainty.reading import Reading, read_certificate
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -106,22 +107,32 @@ def _measured(
     by_integrals = mass_moments_by_integrals(filled)
     difference = compare_routes(by_integrals, filled.mass_moments())
     progress("weigh", 1, 2)
-    scan = settings.scan
+    reading = _declared(shape, settings)
     bounds = bound(
         shape.surface,
         shape.cloud,
         densities=[part.density for part in filled.parts],
         part_moments=np.array([part.moments() for part in filled.parts]),
-        declared=Declared(scan.noise_std, scan.noise_length, scan.scale),
+        declared=reading.declared,
         materials=[part.material for part in filled.parts],
-        coarse=coarse_surface(shape) if scan.noise_std is None else None,
+        coarse=coarse_surface(shape) if reading.declared.noise_std is None else None,
         level=settings.bounds.level,
         replicate_count=settings.bounds.replicates,
         seed=seed,
     )
     progress("weigh", 2, 2)
-    words = assemble(scans, settings, seed, shape, filled, difference, bounds, notes)
+    words = assemble(scans, settings, seed, shape, filled, difference, bounds, notes, reading)
     return words, _products(shape, filled, bounds)
+
+
+def _declared(shape: Shape, settings: Pipeline) -> Reading:
+    """What the pipeline file says of the scanner, completed from its certificate."""
+    scan = settings.scan
+    declared = Declared(scan.noise_std, scan.noise_length, scan.scale)
+    certificate = scan.certificate.certificate
+    if certificate is None:
+        return Reading(declared)
+    return read_certificate(certificate, declared, float(np.ptp(shape.surface.vertices, axis=0).max()))
 
 
 def _filled(shape: Shape, settings: Pipeline) -> tuple[DensityMap, tuple[Note, ...]]:

@@ -21,6 +21,7 @@ from scanmass.uncertainty.declared import Declared, field_rows, from_declaration
 from scanmass.uncertainty.detail import detail_rows
 from scanmass.uncertainty.estimate import Estimate, ShapeFigures, bare_figures, shape_figures
 from scanmass.uncertainty.noise import NoiseModel
+from scanmass.uncertainty.reading import offset_terms
 from scanmass.uncertainty.region import Region, region
 from scanmass.uncertainty.replicate import Replicates, replicates
 from scanmass.uncertainty.sources import Parts, Term, on_outer_part
@@ -208,12 +209,13 @@ def _terms(
     found: list[Term] = []
     for name, rows, degrees in model.parts:
         found.append(Term(name, "random", on_outer_part(rows, parts), degrees))
-    if model.basis == "views" and declared.noise_std:
+    if model.basis == "views" and declared.noise_std and not declared.noise_from_certificate:
         length = (
             declared.noise_length if declared.noise_length is not None else from_declaration(patched, declared).length
         )
         rows = field_rows(patched, declared.noise_std, float(length or 0.0))
         found.append(Term("declared noise common to all views", "declared", on_outer_part(rows, parts)))
+    found.extend(offset_terms(patched, declared, parts))
     if surface.coarse_moments is not None:
         refined = parts.moments.sum(axis=0) - translated(surface.coarse_moments, -centre)
         found.append(Term("reconstruction", "random", on_outer_part(0.5 * refined[None], parts)))
@@ -252,7 +254,7 @@ def _assumptions(declared: Declared, model: NoiseModel) -> tuple[Note, ...]:
         return ()
     text = (
         "No doubt of the scan's scale is declared, so none is in the bounds: an error of 0.1 % would change the mass "
-        "by 0.3 %. Declare scan.scale (for example 1 ± 0.0004) from the scanner's certificate."
+        "by 0.3 %. Declare scan.scale (for example 1 ± 0.0004), or the E of scan.certificate."
     )
     return (Note("scale-taken-as-exact", text),)
 

@@ -32,14 +32,18 @@ class Declared:
     ``noise_std``: one standard deviation of the surface's place along its normal, None where not declared;
     ``noise_length``: l in exp(-(d/l)^2/2), 0 for noise of every point by itself, None where not declared;
     ``scale``: true = scale x measured; the surface comes with its value already applied, only its doubt is used.
+    ``offset_std``: of a shift of the whole surface along its normal, in every view alike.
+    ``noise_from_certificate``: ``noise_std`` is what one view has, not what all views share.
     """
 
     noise_std: float | None = None
     noise_length: float | None = None
     scale: Figure | None = None
+    offset_std: float = 0.0
+    noise_from_certificate: bool = False
 
     def __post_init__(self) -> None:
-        for name in ("noise_std", "noise_length"):
+        for name in ("noise_std", "noise_length", "offset_std"):
             number = getattr(self, name)
             if number is not None and not (np.isfinite(number) and number >= 0):
                 raise ValueError(f"{name} must be zero or more, got {number}")

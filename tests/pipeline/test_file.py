@@ -145,6 +145,7 @@ def test_every_quantity_is_echoed_as_understood() -> None:
 
 NUMBER = st.floats(1e-6, 1e6).map(repr)
 LENGTH = st.builds("{} {}".format, NUMBER, st.sampled_from(["mm", "in", "m", "thou"]))
+GROWING = st.builds("{}{} + L/{!r}".format, st.sampled_from(["", "± "]), LENGTH, st.floats(1e3, 1e9))
 SIGNED = st.floats(-1e6, 1e6).map(repr)
 NAME = st.text(min_size=1, max_size=12).filter(
     lambda text: (
@@ -168,6 +169,9 @@ SETTINGS = st.fixed_dictionaries(
                 "scale": st.builds("1 ± {}".format, st.floats(1e-7, 0.9).map(repr)),
                 "noise_std": LENGTH,
                 "noise_length": LENGTH,
+                "certificate": st.fixed_dictionaries(
+                    {"PF": LENGTH}, optional={"PS": LENGTH, "SD": LENGTH, "E": GROWING}
+                ),
             },
         ).map(lambda scan: scan if "noise_std" in scan else {k: v for k, v in scan.items() if k != "noise_length"}),
         "points": st.dictionaries(

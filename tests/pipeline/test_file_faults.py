@@ -32,11 +32,11 @@ def faults_of(tmp_path: Path, data: str | bytes) -> list[str]:
 
 
 KEYS = {
-    "scan: {unti: mm}": "1: scan.unti: no such key, did you mean 'unit'?; "
-    "allowed: unit, frames, up, scale, noise_std, noise_length",
-    "surface:\n  Under-side: flat": "2: surface.Under-side: no such key, did you mean 'underside'?; "
+    "scan: {unti: mm}": "1: scan.unti: no such key (did you mean 'unit'?); "
+    "allowed: unit, frames, up, scale, noise_std, noise_length, certificate",
+    "surface:\n  Under-side: flat": "2: surface.Under-side: no such key (did you mean 'underside'?); "
     "allowed: resolution, underside",
-    "unit: mm": f"1: unit: no such key, did you mean 'scan.unit'?; allowed: {BLOCKS}",
+    "unit: mm": f"1: unit: no such key (did you mean 'scan.unit'?); allowed: {BLOCKS}",
     "mesh:\n  depth: 7": f"1: mesh: no such key; allowed: {BLOCKS}",
     "assumptions: []": f"1: assumptions: no such key; allowed: {BLOCKS}",
     "clean: {support: auto,\n  outliers: auto,\n  support: none}": "3: clean.support: given again, first on line 1; "
@@ -47,7 +47,8 @@ KEYS = {
     "decisions: {}": "1: decisions: decisions are not available in this version; take the key out for now",
     "scan:\n  poses: trusted": "2: scan.poses: poses declared as trusted are not available in this version; "
     "take the key out for now",
-    "scan: mm": "1: scan: 'mm'; allowed: a block of keys (unit, frames, up, scale, noise_std, noise_length)",
+    "scan: mm": "1: scan: 'mm'; "
+    "allowed: a block of keys (unit, frames, up, scale, noise_std, noise_length, certificate)",
     "clean: [auto]": "1: clean: a list; allowed: a block of keys (support, outliers)",
 }
 
@@ -61,7 +62,7 @@ VALUES = {
     f"did you mean mm (capitals matter)? {LENGTHS}",
     "scan: {unit: kg}": f"1: scan.unit: 'kg' is a unit of mass, not of length; {LENGTHS}",
     "scan: {frames: own}": "1: scan.frames: 'own' is not available in this version; allowed: shared",
-    "scan: {frames: sharde}": "1: scan.frames: 'sharde', did you mean 'shared'?; allowed: shared",
+    "scan: {frames: sharde}": "1: scan.frames: 'sharde' (did you mean 'shared'?); allowed: shared",
     "scan: {up: z}": "1: scan.up: 'z' is not a direction; write three bare numbers, like '0 0 1'",
     "scan: {up: [0, 0, 1]}": "1: scan.up: a list; allowed: three bare numbers, such as 0 0 1",
     "scan: {up: 0 0 0}": "1: scan.up: '0 0 0' has no length; write three bare numbers, like '0 0 1'",
@@ -73,7 +74,8 @@ VALUES = {
     "scan:\n  noise_std: 0,1 mm": "2: scan.noise_std: '0,1 mm' has a comma; "
     "decimals take a point, thousands no mark: write '0.1 mm'",
     "scan:\n  noise_length: -1 mm": "2: scan.noise_length: '-1 mm' is negative; this length is 0 or more",
-    "scan:\n  noise_length:\n    9 mm": "3: scan.noise_length: given without noise_std; declare noise_std too",
+    "scan:\n  noise_length:\n    9 mm": "3: scan.noise_length: given without noise_std; "
+    "declare noise_std too, or certificate.PF",
     "surface: {resolution: 0 mm}": "1: surface.resolution: '0 mm'; "
     "allowed: auto, or a length above 0 with its unit, such as 0.2 mm",
     "points: {lug: 1 2 3}": f"1: points.lug: '1 2 3': no unit is given; {LENGTHS}",
@@ -81,23 +83,44 @@ VALUES = {
     'points: {lug: 1 2 3 mm,\n "lug ": 4 5 6 mm}': "1: points: two points are called 'lug'; "
     "give each point a name of its own",
     "points: [lug]": "1: points: a list; write it as in points: {left wing tip: 120 0 300 mm}",
-    "clean:\n  support: no": "2: clean.support: 'no', did you mean 'none'?; allowed: auto | turntable | none",
-    "clean:\n  outliers: True": "2: clean.outliers: 'True', did you mean 'auto'?; allowed: auto | none",
+    "clean:\n  support: no": "2: clean.support: 'no' (did you mean 'none'?); allowed: auto | turntable | none",
+    "clean:\n  outliers: True": "2: clean.outliers: 'True' (did you mean 'auto'?); allowed: auto | none",
     "surface: {resolution: 2}": f"1: surface.resolution: '2': no unit is given; {LENGTHS}",
-    "surface: {resolution: atuo}": "1: surface.resolution: 'atuo', did you mean 'auto'?; "
+    "surface: {resolution: atuo}": "1: surface.resolution: 'atuo' (did you mean 'auto'?); "
     "allowed: auto, or a length above 0 with its unit, such as 0.2 mm",
     "surface: {underside: hollow}": "1: surface.underside: 'hollow' without its depth; write {hollow: 30 mm}",
-    "surface: {underside: flatt}": "1: surface.underside: 'flatt', did you mean 'flat'?; "
+    "surface: {underside: flatt}": "1: surface.underside: 'flatt' (did you mean 'flat'?); "
     "allowed: seen | flat | unknown | {hollow: DEPTH}",
     "surface:\n  underside: {\n    hollow: 30}": f"3: surface.underside.hollow: '30': no unit is given; {LENGTHS}",
     "surface:\n  underside: {}": "2: surface.underside.hollow: missing; write it as in surface.underside.hollow: 30 mm",
-    "bounds: {level: 95}": "1: bounds.level: '95', did you mean '95 %'?; allowed: from 50 % to 99.9 %",
+    "bounds: {level: 95}": "1: bounds.level: '95' (did you mean '95 %'?); allowed: from 50 % to 99.9 %",
     "bounds: {level: 100 %}": "1: bounds.level: '100 %'; allowed: from 50 % to 99.9 %",
     "bounds: {replicates: 2e3}": "1: bounds.replicates: '2e3'; allowed: a whole number from 200 to 100000",
     "bounds: {replicates: 199}": "1: bounds.replicates: '199'; allowed: a whole number from 200 to 100000",
     "bounds: {replicates: 100001}": "1: bounds.replicates: '100001'; allowed: a whole number from 200 to 100000",
     "bounds:\n  level: 99.9 %\n  replicates: 1999": "3: bounds.replicates: "
     "1999 leave less than one beyond each bound at 99.9 %; at least 2000, or a lower level",
+}
+
+GROWING = "a length, or a length and the share that grows with L, such as 0.06 mm or 0.06 mm + L/20000"
+CERTIFICATE = {
+    "scan: {certificate: yes}": "1: scan.certificate: 'yes'; allowed: a block of keys (PF, PS, SD, E, length)",
+    "scan: {certificate: {pf: 0.1 mm}}": "1: scan.certificate.pf: no such key (did you mean 'PF'?); "
+    "allowed: PF, PS, SD, E, length",
+    "scan:\n  certificate:\n    length: 1 m": "3: scan.certificate.length: given without an error; "
+    "give PF, PS, SD or E too",
+    "scan: {certificate: {PF: 0 mm}}": "1: scan.certificate.PF: '0 mm'; "
+    "allowed: a length above 0 with its unit, such as 0.05 mm, without its sign",
+    "scan: {certificate: {PS: -0.02 mm}}": "1: scan.certificate.PS: '-0.02 mm' has a sign; give its size: 0.02 mm",
+    "scan: {certificate: {PF: 0.05}}": f"1: scan.certificate.PF: '0.05': no unit is given; {LENGTHS}",
+    "scan: {certificate: {E: 0.06 + L/20000}}": f"1: scan.certificate.E: '0.06': no unit is given; {LENGTHS}",
+    "scan: {certificate: {E: 0.06 mm + L/20000 mm}}": "1: scan.certificate.E: '0.06 mm + L/20000 mm' has 'mm' after "
+    "L/20000; write K without a unit, as in 0.06 mm + L/20000, which grows by 0.05 mm in a metre",
+    "scan: {certificate: {E: 1.8 um + L/300}}": "1: scan.certificate.E: '1.8 um + L/300' grows by 3.33 mm in a metre; "
+    "write L/K with L and the limit in one unit (if L/300 means micrometres for L in millimetres, write L/300000)",
+    "scan: {certificate: {E: L/0}}": "1: scan.certificate.E: 'L/0' divides by 0; "
+    "write L/K with L and the limit in one unit",
+    "scan: {certificate: {SD: 0.06 mm + 20 L}}": f"1: scan.certificate.SD: '0.06 mm + 20 L'; allowed: {GROWING}",
 }
 
 INSIDE = {
@@ -137,7 +160,7 @@ YAML = {
 }
 
 
-@pytest.mark.parametrize(("text", "fault"), [*KEYS.items(), *VALUES.items()])
+@pytest.mark.parametrize(("text", "fault"), [*KEYS.items(), *VALUES.items(), *CERTIFICATE.items()])
 def test_a_fault_names_its_line_and_key(tmp_path: Path, text: str, fault: str) -> None:
     assert faults_of(tmp_path, f"{text}\n{BODY}" if fault[3:7] != "file" or "a key" in fault else text) == [fault]
 
@@ -197,16 +220,16 @@ weighings: *d
 """
     found = [line.split("; ")[0] for line in faults_of(tmp_path, text)]
     assert found == [
-        "1: object.nam: no such key, did you mean 'name'?",
+        "1: object.nam: no such key (did you mean 'name'?)",
         "3: scan.unit: 'MM' is not a unit that is read here",
         "4: scan.noise_std: nothing",
         "6: scan.up: '0 0 0' has no length",
         "8: points.left: tip: '1 2 mm' is not a point",
         "9: points.right tip: a block of keys",
         "10: clean.support: given again, first on line 10",
-        "10: clean.outliers: 'off', did you mean 'none'?",
+        "10: clean.outliers: 'off' (did you mean 'none'?)",
         "14: inside.body.densty: an anchor '&d'",
-        "14: inside.body.densty: no such key, did you mean 'density'?",
+        "14: inside.body.densty: no such key (did you mean 'density'?)",
         "16: bounds.replicates: '12'",
         "17: weighings: a reference '*d'",
     ]

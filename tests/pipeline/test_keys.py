@@ -19,6 +19,8 @@ def as_file(row: KeyRow, value: str) -> str:
         return f"points: {value}\ninside: {{body: {{density: 1 g/cm3}}}}\n"
     if row.key == "scan.noise_length":
         value += ", noise_std: 1 mm"
+    if row.key == "scan.certificate.length":
+        value += ", PF: 1 mm"
     parts = row.key.split(".")
     text = ": {".join(parts) + f": {value}" + "}" * (len(parts) - 1)
     return text + ("\n" if parts[0] == "inside" else "\ninside: {body: {density: 1 g/cm3}}\n")
