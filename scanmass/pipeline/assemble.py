@@ -16,8 +16,9 @@ from scanmass.pipeline.models import Pipeline
 from scanmass.pipeline.places import height, offsets
 from scanmass.pipeline.shape import Shape
 from scanmass.scans.scan import Scan
+from scanmass.uncertainty.advice import more_scans, next_measurement, standing
 from scanmass.uncertainty.bounds import Bounds
-from scanmass.uncertainty.document import as_document
+from scanmass.uncertainty.document import advice_block, as_document
 from scanmass.uncertainty.reading import Reading
 
 FloatArray = npt.NDArray[np.float64]
@@ -43,6 +44,7 @@ def assemble(
     center["height_above_base_m"] = None
     if shape.up is not None and shape.base_height is not None:
         center["height_above_base_m"] = height(bounds, shape.surface.closures, shape.up, shape.base_height, scale)
+    now = standing(bounds, shape.surface.underside)
     total = sum(document.returns(scan) for scan in scans)
     said = [n for scan in scans for n in scan.assumptions]
     warned = [n for scan in scans for n in scan.warnings]
@@ -59,7 +61,8 @@ def assemble(
         "scans": document.scan_rows(scans, shape.cloud),
         "removed": document.removed_rows(shape.removed, total),
         "surface": document.surface_block(shape.surface),
-        "noise": found["noise"] | {"declared_in": _declared_in(bounds, reading)},
+        "noise": found["noise"]
+        | {"declared_in": _declared_in(bounds, reading), "more_scans": advice_block(more_scans(now))},
         "volume_m3": found["volume_m3"],
         "mass_kg": found["mass_kg"],
         "center_of_mass_m": center,
@@ -68,6 +71,7 @@ def assemble(
         "density": document.density_block(filled),
         "checks": document.checks_block(difference),
         "budget": found["budget"],
+        "next_measurement": advice_block(next_measurement(now)),
         "assumptions": document.note_rows(
             [*settings.assumptions, *said, *shape.assumptions, *notes, *reading.assumptions, *bounds.assumptions]
         ),

@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from scanmass.uncertainty.advice import Advice
 from scanmass.uncertainty.bounds import Bounds
 from scanmass.uncertainty.bracket import Bound
 from scanmass.uncertainty.budget import BudgetRow
@@ -30,6 +31,14 @@ def as_document(bounds: Bounds) -> Plain:
         "assumptions": [{"code": n.code, "text": n.text} for n in bounds.assumptions],
         "warnings": [{"code": n.code, "text": n.text} for n in bounds.warnings],
     }
+
+
+def advice_block(advice: Advice | None) -> Plain | None:
+    """A measurement that is advised, or None."""
+    if advice is None:
+        return None
+    factors = {"mass_factor": plain(advice.mass_factor), "com_factor": plain(advice.com_factor)}
+    return {"text": advice.text, "source": advice.source, **factors}
 
 
 def plain(number: float | npt.NDArray[np.float64] | None) -> Any:
