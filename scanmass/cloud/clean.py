@@ -38,7 +38,9 @@ def drop_edges(cloud: Cloud) -> tuple[Cloud, Removed, tuple[Note, ...]]:
         notes.append(Note("edges-kept", text))
     share = float(cloud.count[drop].sum() / cloud.count.sum())
     if share > WARN_SHARE:
-        notes.append(Note("many-edges", f"{share:.0%} of the points lie at edges of range grids and were removed."))
+        notes.append(
+            Note("many-edges", f"{100 * share:.0f} % of the points lie at edges of range grids and were removed.")
+        )
     return cloud.keep(~drop), Removed.from_cloud(cloud, drop, "grid edge"), tuple(notes)
 
 

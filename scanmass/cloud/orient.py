@@ -86,7 +86,7 @@ def orient(cloud: Cloud, *, floor: Floor | None = None, progress: Progress = sil
     if undecided > MOST_UNDECIDED:
         _refuse_sheet(cloud.points, raw.noise)
         raise Declined(
-            f"for {undecided:.0%} of the points outside cannot be told from inside",
+            f"for {100 * undecided:.0f} % of the points outside cannot be told from inside",
             allowed="give a scan with scanner positions or outward normals, scan more of the object, "
             "or (walls thinner than a few point spacings) scan it more densely",
         )
@@ -137,7 +137,7 @@ def _weighed(
         notes.append(
             Note(
                 "scanner-positions-doubtful",
-                f"At {against:.0%} of the points the scanner would have looked through the object; the scanner "
+                f"At {100 * against:.0f} % of the points the scanner would have looked through the object; the scanner "
                 "positions of the file were not used to tell outside from inside.",
             )
         )
@@ -169,7 +169,7 @@ def _from_file(cloud: Cloud, raw: RawNormals, rays: FloatArray) -> tuple[FloatAr
     if agree <= 1.0 - AGREE:
         text = "The normals in the file point inward; all were turned round."
         return -own, True, [Note("file-normals-inverted", text)]
-    text = f"The normals in the file point outward at only {agree:.0%} of the points and were not used."
+    text = f"The normals in the file point outward at only {100 * agree:.0f} % of the points and were not used."
     return own, False, [Note("file-normals-ignored", text)]
 
 

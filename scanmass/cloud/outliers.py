@@ -48,7 +48,7 @@ def outliers(cloud: Cloud) -> tuple[Cloud, Removed, tuple[Note, ...]]:
     notes: tuple[Note, ...] = ()
     share = float(cloud.count[stray].sum() / max(int(cloud.count.sum()), 1))
     if share > WARN_SHARE:
-        text = f"{share:.1%} of the points were taken for outliers and removed; look at them in removed.ply."
+        text = f"{100 * share:.1f} % of the points were taken for outliers and removed; look at them in removed.ply."
         notes = (Note("many-outliers", text),)
     return cloud.keep(~stray), Removed.from_cloud(cloud, stray, "outlier"), notes
 

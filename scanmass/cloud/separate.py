@@ -168,8 +168,8 @@ def _without_support(cloud: Cloud, found: Judged) -> tuple[Cloud, Removed, Note]
     removed = Removed.from_cloud(cloud, found.remove, found.kind)
     what = "A round disc under the object" if found.kind == "turntable" else "A plane under the object"
     text = (
-        f"{what} goes on beyond its outline and was taken for a {found.kind.split()[0]}: {share:.0%} of the points "
-        "were removed. If it is part of the object, set clean.support to none."
+        f"{what} goes on beyond its outline and was taken for a {found.kind.split()[0]}: {100 * share:.0f} % of the "
+        "points were removed. If it is part of the object, set clean.support to none."
     )
     return cloud.keep(~found.remove), removed, Note(f"{found.kind.split()[0]}-removed", text)
 
@@ -204,7 +204,7 @@ def _without_clutter(cloud: Cloud, seed: int) -> tuple[Cloud, Removed, list[Note
         said.append(Note("pieces-joined", text))
     share = float(cloud.count[pieces.clutter].sum() / cloud.count.sum())
     if pieces.clutter.any():
-        text = f"Separate pieces, {share:.1%} of the points, were taken for clutter and removed."
+        text = f"Separate pieces, {100 * share:.1f} % of the points, were taken for clutter and removed."
         (warned if share > WARN_CLUTTER else said).append(Note("clutter-removed", text))
     away = Removed.from_cloud(cloud, pieces.clutter, "clutter")
     away = away.joined(Removed.from_cloud(cloud, pieces.strays, "outlier"))

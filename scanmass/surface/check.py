@@ -58,7 +58,7 @@ def thin_walls(surface: Surface, cell: float | None = None) -> tuple[Note, ...]:
     if share < LEAST_SHARE:
         return ()
     text = (
-        f"walls of about {float(np.median(thickness[thin])) * 1000:.3g} mm lie behind {share:.0%} of the surface: "
-        f"under five cells of {cell * 1000:.3g} mm, so their thickness is poorly resolved"
+        f"walls of about {float(np.median(thickness[thin])) * 1000:.3g} mm lie behind {100 * share:.0f} % of the "
+        f"surface: under five cells of {cell * 1000:.3g} mm, so their thickness is poorly resolved."
     )
     return (Note("thin-wall", text),)

@@ -58,12 +58,12 @@ def require_all_round(
     share = unseen_share(mesh, inferred, up)
     if up is None and share > LEAST_UNSEEN:
         raise Declined(
-            f"the scan is one-sided: {share:.0%} of all directions look at surface that was not seen",
+            f"the scan is one-sided: {100 * share:.0f} % of all directions look at surface that was not seen",
             allowed="scan the other sides too, or declare scan.up and surface.underside (flat or hollow)",
         )
     if up is not None and share > LEAST_UNSEEN_ABOVE:
         raise Declined(
-            f"the scan is one-sided: {share:.0%} of the directions beside and above the object look at surface "
+            f"the scan is one-sided: {100 * share:.0f} % of the directions beside and above the object look at surface "
             "that was not seen",
             allowed="scan the other sides too: a declared underside closes the object from below only",
         )
@@ -76,9 +76,9 @@ def require_all_round(
     guessed = float(area[beside & inferred].sum() / area[beside].sum())
     if guessed > (MOST_AREA if up is None else MOST_AREA_ABOVE):
         raise Declined(
-            f"the scan is {'one-sided' if share > 0.1 else 'patchy'}: {guessed:.0%} of the surface"
+            f"the scan is {'one-sided' if share > 0.1 else 'patchy'}: {100 * guessed:.0f} % of the surface"
             f"{'' if up is None else ' beside and above'} was not seen, "
-            f"and {share:.0%} of all directions look mostly at that",
+            f"and {100 * share:.0f} % of all directions look mostly at that",
             allowed="scan the other sides too"
             + (", or declare scan.up and surface.underside (flat or hollow)" if up is None else ""),
         )

@@ -68,7 +68,7 @@ def test_clutter_goes_and_is_counted():
     assert len(done.cloud.points) == 12_000
     assert (done.removed.reason == REASONS.index("clutter")).all()
     assert [note.code for note in done.assumptions] == ["clutter-removed"]
-    assert "1.6% of the points" in done.assumptions[0].text
+    assert "1.6 % of the points" in done.assumptions[0].text
 
 
 def test_pieces_of_one_object_stay_together():

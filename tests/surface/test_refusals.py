@@ -46,7 +46,7 @@ def test_half_a_body_closed_by_a_lid_is_declined() -> None:
 def test_patches_of_a_surface_are_not_a_body() -> None:
     mesh = trimesh.creation.icosphere(4)
     inferred = np.random.default_rng(0).random(len(mesh.faces)) < 0.35
-    with pytest.raises(Declined, match=r"the scan is patchy: 3\d% of the surface was not seen, and 0% of all"):
+    with pytest.raises(Declined, match=r"the scan is patchy: 3\d % of the surface was not seen, and 0 % of all"):
         require_all_round(Mesh(np.array(mesh.vertices), np.array(mesh.faces), 0.05), inferred, None)
 
 
