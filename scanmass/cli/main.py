@@ -13,9 +13,10 @@ from scanmass.cli.check import check
 from scanmass.cli.exits import guarded
 from scanmass.cli.materials import materials
 from scanmass.cli.measure import measure
+from scanmass.cli.rehearse import rehearse
 from scanmass.cli.samples import samples
 
-COMMANDS: tuple[Callable[..., int], ...] = (measure, check, materials, samples)
+COMMANDS: tuple[Callable[..., int], ...] = (measure, check, materials, samples, rehearse)
 
 app = typer.Typer(
     name="scanmass",

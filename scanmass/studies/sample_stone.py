@@ -67,7 +67,8 @@ def write_stone(directory: Path, progress: Progress) -> list[Path]:
     stone = stone_beast().moved(turned((0.0, 0.0, 21.0)), _MIDDLE)
     table = box("table", (1.8, 1.4, 0.05), (0.62, 0.50, _DISC_TOP - 0.040 - 0.025))
     gauge = box("gauge block", (0.100, 0.030, 0.030), (0.16, 0.02, _DISC_TOP - 0.040 + 0.015))
-    scene = Scene([stone, _turntable(), table, _mallet(), gauge])
+    bodies = [stone, _turntable(), table, _mallet(), gauge]
+    scene = Scene(bodies)
     sensor = Sensor(116, 150, np.radians(39.0), _ERRORS)
     poses = _poses()
     views = []
@@ -82,7 +83,7 @@ def write_stone(directory: Path, progress: Progress) -> list[Path]:
     figures |= {
         "underside_missing": True,
         "support_height_m": _DISC_TOP,
-        "points_on": {body.name: int(np.sum(part == k)) for k, body in enumerate(scene.bodies)},
+        "points_on": {body.name: int(np.sum(part == k)) for k, body in enumerate(bodies)},
         "false_returns": int(np.sum(part < 0)),
         "planted_errors": errors_entry(sensor),
     }

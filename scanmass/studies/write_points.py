@@ -52,6 +52,17 @@ def write_pcd(path: Path, points: FloatArray) -> None:
     path.write_bytes("\n".join(header).encode("ascii") + points.astype("<f4").tobytes())
 
 
+def write_view_pcd(path: Path, points: FloatArray, scanner: FloatArray | None) -> None:
+    """Binary PCD of one view in doubles, ``scanner`` (3,) in the frame of ``points`` (n, 3), None where not known."""
+    n = len(points)
+    place = " ".join(repr(float(c)) for c in (np.zeros(3) if scanner is None else scanner))
+    header = [
+        *("# .PCD v0.7 - Point Cloud Data file format", "VERSION 0.7", "FIELDS x y z", "SIZE 8 8 8", "TYPE F F F"),
+        *("COUNT 1 1 1", f"WIDTH {n}", "HEIGHT 1", f"VIEWPOINT {place} 1 0 0 0", f"POINTS {n}", "DATA binary\n"),
+    ]
+    path.write_bytes("\n".join(header).encode("ascii") + points.astype("<f8").tobytes())
+
+
 def write_xyz(path: Path, points: FloatArray, view: npt.NDArray[np.integer], decimals: int) -> None:
     """Text of ``points`` (n, 3), in the file's unit, under a header line: x y z view."""
     lines = [
