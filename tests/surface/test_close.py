@@ -153,7 +153,7 @@ def test_one_side_is_declined() -> None:
     points = points[points[:, 0] > 0]
     cloud = cloud_of(points, points)
     mesh = reconstruct(cloud)
-    with pytest.raises(Declined, match=r"one-sided: \d+% of all directions .*; scan the other sides"):
+    with pytest.raises(Declined, match=r"one-sided: \d+ % of all directions .*; scan the other sides"):
         close(mesh, cloud, underside="unknown")
     with pytest.raises(Declined, match=r"beside and above the object .*closes the object from below only"):
         close(mesh, cloud, underside="flat", up=UP)
