@@ -22,9 +22,9 @@ from scanmass.geometry.polyhedron import polyhedron_moments
 from scanmass.geometry.tensors import central_inertia, principal
 from scanmass.pipeline.file import effective_text, load
 from scanmass.pipeline.models import Pipeline
-from scanmass.report.ply import Drawn, read_removed, read_surface
+from scanmass.report.ply import read_removed, read_surface
 from scanmass.report.tables import read_state
-from scanmass.studies.ray_casting import Scene
+from scanmass.studies.ray_casting import Scene, Skin
 
 FloatArray = npt.NDArray[np.float64]
 IndexArray = npt.NDArray[np.int64]
@@ -206,7 +206,7 @@ def _noise(block: Mapping[str, Any], settings: Pipeline, size: float) -> Noise:
     )
 
 
-def _white(samples: FloatArray, view: IndexArray, surface: Drawn) -> FloatArray:
+def _white(samples: FloatArray, view: IndexArray, surface: Skin) -> FloatArray:
     """Standard deviation (k,) of each sample by itself, from how far neighbours of one view differ.
 
     What a field of the view and the shape of the surface do is alike in neighbours. The median of 16 differences
