@@ -93,6 +93,7 @@ def from_declaration(patches: Patches, declared: Declared) -> NoiseModel:
         views=patches.views,
         parts=(("scan noise", rows, None),),
         assumptions=assumptions,
+        warnings=_too_few_views(patches),
     )
 
 
@@ -126,8 +127,19 @@ def upper_bound(
         "gaussian",
         views=patches.views,
         parts=(("scan noise (upper bound)", field_rows(patches, std, length), None),),
-        warnings=(Note("noise-upper-bound", text),),
+        warnings=(Note("noise-upper-bound", text), *_too_few_views(patches)),
     )
+
+
+def _too_few_views(patches: Patches) -> tuple[Note, ...]:
+    """Two views differ by one number where they meet: no 95 % can be drawn from that."""
+    if patches.views != 2:
+        return ()
+    text = (
+        "Two views cannot tell how noisy they are: where they meet they differ by one number, and no 95 % follows from "
+        "the data. The bounds rest on what is declared or taken as an upper bound; a third view would tell."
+    )
+    return (Note("two-views", text),)
 
 
 def unknown(patches: Patches) -> NoiseModel:

@@ -73,6 +73,18 @@ def test_upper_bound_is_above_the_noise(ball, on_sphere):
     assert upper_bound(ball, points[:499], np.array(coarse.vertices), np.array(coarse.faces, np.int64)) is None
 
 
+def test_two_views_tell_no_bound_of_their_own(surface_of, cloud_of, on_sphere):
+    rng = np.random.default_rng(2)
+    ball = trimesh.creation.icosphere(4, 0.5)
+    points = 0.5 * on_sphere(rng, 4000)
+    two = patches.make(surface_of(ball), cloud_of(points, np.arange(4000) % 2), centre=np.zeros(3))
+    (note,) = from_declaration(two, Declared(0.001, 0.1)).warnings
+    assert note.code == "two-views"
+    assert "no 95 % follows from the data" in note.text
+    model = upper_bound(two, points, np.array(ball.vertices), np.array(ball.faces, np.int64))
+    assert [n.code for n in model.warnings] == ["noise-upper-bound", "two-views"]
+
+
 def test_declared_numbers_are_checked():
     with pytest.raises(ValueError, match="noise_std must be zero or more, got -1"):
         Declared(noise_std=-1)
