@@ -1,0 +1,205 @@
+"""The coverage study: its own arithmetic against known values, its generators, and a short run of the whole."""
+
+from __future__ import annotations
+
+import copy
+import json
+from pathlib import Path
+
+import numpy as np
+import pytest
+from scipy.stats import t as student
+
+from scanmass.geometry.polyhedron import face_areas
+from scanmass.geometry.tensors import central_inertia, principal
+from scanmass.studies.ray_casting import Scene
+from tests.benchmarks import coverage
+from tests.benchmarks.coverage_bodies import BODIES, body, near_symmetric
+from tests.benchmarks.coverage_cells import CELLS, FIRST, named
+from tests.benchmarks.coverage_generators import Planted, merged_into_one, simulate
+from tests.benchmarks.coverage_scan import seed_of, truth
+from tests.benchmarks.coverage_tally import (
+    AT_95,
+    UNDETERMINED,
+    Count,
+    Range,
+    count,
+    degrees_behind,
+    held,
+    held_68,
+    holm,
+)
+
+
+def test_binomial_tests_against_products_and_sums_by_hand() -> None:
+    # None of three at 93 %: 0.07^3. All of 200 at 98 %: 0.98^200. Two or fewer of four at a half: 11/16.
+    assert Count(0, 3).p_value(AT_95) == pytest.approx(0.07**3, rel=1e-12)
+    assert Count(200, 200).p_value(AT_95) == pytest.approx(0.98**200, rel=1e-12)
+    assert Count(2, 4).p_value(Range(0.51, None)) == pytest.approx(
+        sum(w * 0.51**k * 0.49 ** (4 - k) for k, w in enumerate((1, 4, 6))), rel=1e-12
+    )
+    # Inside the range nothing speaks against it, and more than enough is no fault where no upper end is asked.
+    assert Count(190, 200).p_value(AT_95) == 1.0
+    assert Count(200, 200).p_value(Range(0.95, None)) == 1.0
+    assert Count(0, 0).p_value(AT_95) == 1.0
+
+
+def test_holm_against_a_worked_example() -> None:
+    # Ordered 0.005, 0.01, 0.03, 0.04 times 4, 3, 2, 1: 0.02, 0.03, 0.06, and 0.04 lifted to 0.06.
+    assert holm([0.01, 0.04, 0.03, 0.005]) == pytest.approx([0.03, 0.06, 0.06, 0.02])
+    assert holm([0.9, 0.8]) == [1.0, 1.0]
+    assert holm([]) == []
+
+
+@pytest.mark.parametrize("nu", [2.0, 5.0, 17.5, 60.0])
+def test_degrees_of_freedom_behind_a_factor(nu: float) -> None:
+    assert degrees_behind(float(student.ppf(0.975, nu))) == pytest.approx(nu, rel=1e-6)
+    assert degrees_behind(1.9) == np.inf
+
+
+def _line() -> dict[str, object]:
+    """A scan whose bounds all hold by a tenth of a standard deviation, one of them five degrees of freedom."""
+    half = float(student.ppf(0.975, 5))
+    moment = {"value": 1.1, "std": 1.0, "low": 1.1 - half, "high": 1.1 + half}
+    axes = np.eye(3).tolist()
+    covariance = np.diag([1.0, 4.0, 9.0]).tolist()
+    region = {"center_m": [0.1, 0.0, 0.0], "radii_m": [3.0, 2.0, 1.0], "axes": np.eye(3)[::-1].tolist(), "level": 0.95}
+    com = {"value": [0.1, 0.0, 0.0], "std": [1.0, 2.0, 3.0], "low": [-1.9, -4.0, -6.0], "high": [2.1, 4.0, 6.0]}
+    one = {"value": 10.1, "std": 1.0, "low": 8.0, "high": 12.0, "degrees_of_freedom": 5.0, "bracket": None}
+    com |= {"degrees_of_freedom": [5.0] * 3, "bracket": None, "covariance": covariance, "region": region}
+    axis = {"moment_kg_m2": moment, "determined": True, "cone_deg": 3.0}
+    return {
+        "cell": "white-pebble-4",
+        "scan": 0,
+        "level": 0.95,
+        "truth": {"volume": 10.0, "com": [0.0, 0.0, 0.0], "principal": [1.0] * 3, "axes": axes},
+        "volume": one,
+        "com": com,
+        "principal": [{**axis, "axis": row} for row in axes],
+    }
+
+
+def test_what_held_is_told_from_what_did_not() -> None:
+    line = _line()
+    assert all(held(line)[name] == [True] for name in ("volume", "x", "y", "z", "region", "moment 1", "axis 3"))
+    assert all(held_68(line)[name] == [True] for name in ("volume", "x", "y", "z", "region", "moment 3"))
+    # Student's 68 % factor at five degrees of freedom is 1.10 (tables: 1.10), so 1.2 standard deviations miss.
+    off = copy.deepcopy(line)
+    off["truth"] |= {"volume": 8.9, "com": [2.2, 0.0, 0.0]}  # type: ignore[operator]
+    assert held_68(off)["volume"] == held_68(off)["x"] == [False]
+    assert held(off)["volume"] == [True]
+    assert held(off)["x"] == held(off)["region"] == [False]
+    # Beyond the smallest radius along x, though within the largest.
+    beyond = copy.deepcopy(line)
+    beyond["truth"]["com"] = [1.2, 0.0, 0.0]  # type: ignore[index]
+    assert held(beyond)["region"] == [False]
+    assert held(beyond)["x"] == [True]
+
+
+def test_axes_hold_by_their_cone_or_by_being_undetermined() -> None:
+    line = _line()
+    c, s = np.cos(np.radians(4.0)), np.sin(np.radians(4.0))
+    # Turned by 4 degrees about z, and turned round: sign does not count, a cone of 3 degrees does.
+    line["truth"]["axes"] = [[-c, -s, 0.0], [-s, c, 0.0], [0.0, 0.0, 1.0]]  # type: ignore[index]
+    found = held(line)
+    assert [found[f"axis {k}"] for k in (1, 2, 3)] == [[False], [False], [True]]
+    for axis in line["principal"][:2]:  # type: ignore[index]
+        axis |= {"determined": False, "cone_deg": None}
+    found = held(line)
+    assert [found[f"axis {k}"] for k in (1, 2, 3)] == [[True]] * 3
+    assert found[UNDETERMINED] == [True, True]
+    assert "moment 1" not in found
+    assert count([line, line])[UNDETERMINED] == Count(4, 4)
+
+
+def test_declined_scans_and_absent_bounds_count_nowhere() -> None:
+    line = _line()
+    line["volume"] = {**line["volume"], "low": None, "high": None, "std": None}  # type: ignore[dict-item]
+    assert "volume" not in held(line)
+    assert held_68(line) == {}
+    assert count([{"cell": "x", "declined": "words"}]) == {}
+
+
+def test_bodies_are_closed_and_as_large_as_the_issue_asks() -> None:
+    for name in BODIES:
+        made = body(name)  # a Body refuses an open mesh
+        assert 0.2 <= np.ptp(made.vertices, axis=0).max() <= 1.5
+        assert made.moments()[0] > 0
+    shares = []
+    for name in ("column", "mound", "drum", "torso"):
+        made = body(name)
+        area, normal = face_areas(made.vertices, made.faces)
+        height = made.vertices[made.faces].mean(axis=1)[:, 2]
+        shares.append(area[(normal[:, 2] < -0.7) & (height < 0.02)].sum() / area.sum())
+    assert 0.05 <= min(shares) <= max(shares) <= 0.205
+
+
+@pytest.mark.parametrize("gap", [0.0, 0.01, 0.05])
+def test_near_symmetric_bodies_have_the_gap_asked(gap: float) -> None:
+    moments, _ = principal(central_inertia(near_symmetric(gap).moments()))
+    # Exact but for rounding of sums over 25 000 faces.
+    assert moments[1] / moments[0] - 1.0 == pytest.approx(gap, abs=1e-9)
+    assert moments[2] / moments[0] == pytest.approx(1.3, abs=1e-9)
+
+
+def test_scans_without_errors_lie_on_the_body_and_carry_its_truth() -> None:
+    scan = simulate(body("gourd"), Planted(white=0.0), views=4, stations=1, points=800, seed=3)
+    # Turned and moved, it is the same body.
+    there, here = truth(scan.body.moments()), truth(body("gourd").moments())
+    assert there["volume"] == pytest.approx(here["volume"], rel=1e-12)
+    assert there["principal"] == pytest.approx(here["principal"], rel=1e-9)
+    points = np.concatenate([view.points for view in scan.views])
+    places, _ = Scene([scan.body]).nearest(points)
+    # The tree's single precision finds the triangle, places are in double: 1e-7 of some metres.
+    assert np.linalg.norm(places - points, axis=1).max() < 1e-6
+    assert 0.8 < len(points) / 3200 < 1.2
+    assert len(merged_into_one(scan).views) == 1
+
+
+@pytest.mark.parametrize(
+    ("planted", "spread"),
+    [
+        (Planted(white=0.001), 0.001),
+        (Planted(white=0.0, field=0.001, length=0.03), 0.001),
+        (Planted(white=0.0, stripes=0.001), 0.001),
+        (Planted(white=0.0, warp=0.001), 0.001),
+    ],
+)
+def test_planted_errors_have_their_size(planted: Planted, spread: float) -> None:
+    wanted = {"views": 6, "stations": 1, "points": 3000, "seed": 8}
+    clean, dirty = (simulate(body("pebble"), p, **wanted) for p in (Planted(white=0.0), planted))  # type: ignore[arg-type]
+    off = np.concatenate([b.points - a.points for a, b in zip(clean.views, dirty.views, strict=True)])
+    # Six draws of a field of some tens of lengths each, or of one warp each: within a third.
+    assert np.sqrt((off**2).sum(axis=1).mean()) / clean.size == pytest.approx(spread, rel=0.33)
+
+
+def test_unseen_bodies_are_not_seen_from_below_nor_is_their_floor() -> None:
+    scan = simulate(body("drum"), Planted(white=0.0), views=4, stations=1, points=2000, seed=1, standing=True)
+    points = np.concatenate([view.points for view in scan.views])
+    _, normals = Scene([scan.body]).nearest(points)
+    assert normals[:, 2].min() > -0.9
+    assert scan.body.vertices[:, 2].min() - 1e-6 <= points[:, 2].min()
+
+
+def test_ledger_goes_on_where_it_stopped(tmp_path: Path) -> None:
+    cells = named("white-pebble-4,axes")
+    path = tmp_path / "ledger.jsonl"
+    assert coverage.ledger(path) == []
+    assert len(coverage.missing([], cells, 3)) == 18
+    done = {"cell": "white-pebble-4", "scan": 1}
+    path.write_text(json.dumps(done) + "\n" + '{"cell": "axes-gap0')
+    assert coverage.ledger(path) == [done]
+    left = coverage.missing(coverage.ledger(path), cells, 2)
+    assert [(c.name, k) for c, k in left if c.name == "white-pebble-4"] == [("white-pebble-4", 0)]
+    assert seed_of(cells[0], 0) != seed_of(cells[0], 1) != seed_of(cells[1], 1)
+
+
+def test_cells_are_a_design_of_the_size_asked() -> None:
+    assert len({c.name for c in CELLS}) == len(CELLS)
+    noise = [c for c in CELLS if c.group == "noise"]
+    assert {c.views for c in noise} == {3, 4, 5, 6, 8, 10}
+    assert len({c.body for c in noise}) >= 6
+    assert len({c.noise for c in noise}) >= 10
+    assert len(named("first")) == len(FIRST.split(","))
+    with pytest.raises(ValueError, match="no cell, group or noise model is called nonsense"):
+        named("nonsense")
