@@ -22,7 +22,8 @@ _TURN = float(np.radians(0.1))
 @dataclass(frozen=True)
 class Cell:
     """``noise``: the model's name in the pooled tables; ``kind``: what the pipeline file is told;
-    ``floor``: it is left in the scan; ``stations``: looks that make one view (more than one: repeat scans of the whole); ``points``: of each view;
+    ``floor``: it is left in the scan; ``stations``: looks that make one view (more than one: repeat scans of the
+    whole); ``points``: of each view;
     ``support``: of the pipeline file. Looking for a table takes a third of the time, so most cells say that none was
     scanned.
     """

@@ -109,9 +109,11 @@ def simulate(
     return Simulated(tuple(merged), placed, size)
 
 
-def _one_look(scene: Scene, sensor: Sensor, pose: Pose, planted: Planted, body: Body, seed: int, index: int) -> View:
+def _one_look(
+    scene: Scene, sensor: Sensor, pose: Pose, planted: Planted, body: Body, seed: int, index: int, floor: bool
+) -> View:
     view = look(scene, sensor, pose, seed=seed, index=index)
-    view = view.keep(view.part != 1)
+    view = view if floor else view.keep(view.part != 1)
     if planted.uneven > 1.0:
         # Thinner and thinner along the body's own length.
         along = np.linalg.svd(body.vertices - body.vertices.mean(axis=0), full_matrices=False)[2][0]
