@@ -7,14 +7,12 @@ from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, field
 from typing import Any, Literal, Protocol
 
-from scanmass.report import wording
+from scanmass.report import lead, wording
 from scanmass.report.figures import EXACT, UNKNOWN_DOUBT, Ruler, System, share
 
 Document = dict[str, Any]
 LEAST_NAMED = 1e-3
 """Shares of the doubt below this are not told apart."""
-MUCH_CLUTTER = 0.05
-"""Share of the points taken for clutter above which a reader must know before the figures."""
 Kind = Literal["lead", "result", "measured", "bracketed", "declared", "assumed", "declined", "warning", "caution"]
 
 
@@ -89,17 +87,17 @@ def rows(document: Document, name: System = "metric", understood: Iterable[Under
     """
     use = Rulers.of(document, name)
     sections = (
-        Section("Read this first", "lead", tuple(_lead(document))),
+        Section("Read this first", "lead", tuple(Row(text) for text in lead.sentences(document, use.mass, use.length))),
         Section("Warnings", "warning", tuple(_notes(document["warnings"]))),
         Section("Weight and volume", "result", tuple(_weight(document, use)), _level(document)),
         Section("Centre of mass", "result", tuple(_centre(document, use)), "In the coordinates of the first scan."),
-        Section("Principal moments and axes", "result", tuple(_principal(document, use)), "About the centre of mass."),
+        Section("Bracketed: what was not seen", "bracketed", tuple(_bracketed(document, use)), _BRACKET),
+        Section("Where the doubt comes from", "result", tuple(_budget(document, use)), _dominant(document, use)),
+        Section("Principal moments and axes", "result", tuple(_principal(document, use)), _TURNING),
         Section("Inertia tensor", "result", tuple(_inertia(document, use)), _sign(document)),
         Section("Measured: the scan", "measured", tuple(_scan(document, use))),
         Section("Taken away before weighing", "measured", tuple(_removed(document))),
-        Section("Bracketed: what was not seen", "bracketed", tuple(_bracketed(document, use)), _BRACKET),
-        Section("Where the doubt comes from", "result", tuple(_budget(document, use)), _dominant(document, use)),
-        Section("Declared: quantities as understood", "declared", tuple(Row(q.key, q.text) for q in understood)),
+        Section("Declared: quantities as understood", "declared", tuple(Row(q.key, q.text) for q in understood), _READ),
         Section("Assumed", "assumed", tuple(_notes(document["assumptions"]))),
         Section("Declined: not claimed", "declined", tuple(_declined(document))),
         Section("Before you lift", "caution", tuple(Row(text) for text in wording.CAUTIONS)),
@@ -107,6 +105,8 @@ def rows(document: Document, name: System = "metric", understood: Iterable[Under
     return tuple(section for section in sections if section.rows)
 
 
+_TURNING = "How hard it is to set turning about its centre of mass: least, middle and greatest, and the axis of each."
+_READ = "As read from the pipeline file, in metric units."
 _BRACKET = "Least and greatest over the shapes it could have, taken alone. Not random: no percentage attaches to it."
 
 
@@ -127,24 +127,6 @@ def _dominant(document: Document, use: Rulers) -> str:
     rulers = (("mass", use.mass), ("com", use.length))
     most = " ".join(filter(None, (wording.dominant(document, of, ruler) for of, ruler in rulers)))
     return f"{most} Below: one standard deviation of each source, and its share." if most else ""
-
-
-def _lead(document: Document) -> Iterator[Row]:
-    reason = wording.no_bound(document)
-    if reason is not None:
-        yield Row(f"No bound can be given: {reason}")
-    unseen = wording.bracket_leads(document)
-    if unseen is not None:
-        yield Row(unseen)
-    clutter = sum(removed["share"] for removed in document["removed"] if removed["reason"] == "clutter")
-    if clutter > MUCH_CLUTTER:
-        yield Row(f"{share(clutter)} of the points were taken for clutter and not weighed: look at removed.ply.")
-    undetermined = sum(not p["determined"] for p in document["principal"])
-    if undetermined:
-        which = (
-            "None of the principal axes can" if undetermined == 3 else f"{undetermined} of the 3 principal axes cannot"
-        )
-        yield Row(f"{which} be told from this scan; see below.")
 
 
 def _figure(label: str, figure: Document, ruler: Ruler, remark: str = "") -> Row:
@@ -180,6 +162,8 @@ def _centre(document: Document, use: Rulers) -> Iterator[Row]:
     if region is not None and not all(use.length.is_nothing(radius) for radius in region["radii_m"]):
         radii = use.length.stds(region["radii_m"], " x ")
         remark = f"{share(region['level'])} region of the random and declared doubt, all three axes together"
+        if centre["bracket"] is not None:
+            remark += "; what was not seen comes on top"
         yield Row("region, half-axes", "", radii, remark)
 
 
@@ -219,7 +203,7 @@ def _scan(document: Document, use: Rulers) -> Iterator[Row]:
     known = [d for d in difference.values() if d is not None]
     if known:
         yield Row(
-            "two routes", f"agree to {max(known):.1g}", "", "exact surface integrals against the cut cells, relative"
+            "arithmetic", f"right to {max(known):.1g}", "", "two independent ways of adding up the body, relative"
         )
 
 
@@ -260,7 +244,10 @@ def _budget(document: Document, use: Rulers) -> Iterator[Row]:
         length = None if centre is None else math.hypot(*(centre if isinstance(centre, list) else [centre]))
         on_mass = _doubt(mass, use.mass, row["share_mass"], ends)
         on_centre = _doubt(length, use.length, row["share_com"], ends)
-        yield Row(row["source"] + ("" if row["kind"] == "random" else f", {row['kind']}"), on_mass, on_centre)
+        yield Row(row["source"] + wording.KINDS[row["kind"]], on_mass, on_centre)
+    for source in dict.fromkeys(row["source"] for row in document["budget"]):
+        if source in wording.SOURCES:
+            yield Row(f"{source}: {wording.SOURCES[source]}")
 
 
 _STDS, _HALVES = ("mass_std_kg", "com_std_m"), ("mass_half_range_kg", "com_half_range_m")
@@ -276,9 +263,10 @@ def _doubt(size: float | None, ruler: Ruler, part: float | None, ends: bool) -> 
 def _notes(notes: list[Document]) -> Iterator[Row]:
     for note in notes:
         text = note["text"]
-        first = text.split(" ", 1)[0]
+        first = text.split(" ", 1)[0].rstrip(":")
+        end = "" if text.endswith((".", "?", "!")) else "."
         # File names keep their case.
-        yield Row(text[:1].upper() + text[1:] if first.isalpha() else text, remark=f"[{note['code']}]")
+        yield Row((text[:1].upper() + text[1:] if first.isalpha() else text) + end, remark=f"[{note['code']}]")
 
 
 def _declined(document: Document) -> Iterator[Row]:

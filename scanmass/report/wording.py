@@ -20,6 +20,23 @@ CAUTIONS = (
     "qualified person decide.",
 )
 
+KINDS = {"random": "", "declared": ", declared", "bracket": ", bracketed"}
+"""What a source's name carries behind it; most are random."""
+
+SOURCES = {
+    "scan noise": "scatter of the surface, alike over some distance, so that it does not average out",
+    "scan noise (upper bound)": "all that strays from a coarse surface, true shape and scatter together",
+    "view poses": "how well the views were laid on one another",
+    "reconstruction": "what fitting a surface through the points may have moved",
+    "edges finer than the points": "corners and ridges that fall between the points",
+    "scale": "the scanner's lengths as a whole too long or too short",
+    "surface offset": "the whole surface too far out or too far in",
+    "unseen surface": "between the least and the greatest shape that what was not scanned could have",
+    "pose or incidence error common to all views": "what all views could have wrong alike; a known length on the "
+    "object or a weighing settles it",
+}
+"""The budget's sources in plain words; densities speak for themselves."""
+
 _UNDERSIDES = {
     "seen": "the underside counts as scanned",
     "flat": "the underside is declared flat, at the contact plane",
@@ -41,15 +58,42 @@ def noise(document: Document, length: Ruler) -> str:
     found = document["noise"]
     size = "" if found["std_m"] is None else f" of {length.std(found['std_m'])} (one standard deviation)"
     reach = "" if found["length_m"] is None else f", alike over {length.std(found['length_m'])}"
+    if found["shift_std_m"] is not None:
+        reach += f", each view shifted by {length.std(found['shift_std_m'])}"
+    where = "taken from the scanner's certificate" if _certified(document) else "declared in the pipeline file"
     return {
         "views": f"random, between views: noise{size}{reach}, from how {found['views']} views of the same places "
         "differ. An error common to all views does not show in it.",
-        "declared": f"declared in the pipeline file: noise{size}{reach}.",
+        "declared": f"{where}: noise{size}{reach}.",
         "upper_bound": f"an upper bound: noise{size}{reach}, from one cloud without views, so true shape "
-        "that is finer than the comparison surface counts as noise. A second scan, or the scanner's stated noise, "
+        "that is finer than the comparison surface counts as noise. The scanner's stated noise, or two more scans, "
         "would settle it.",
         "none": "nothing to go by: the scan does not show its own noise and none is declared.",
     }[found["basis"]]
+
+
+def basis(document: Document) -> str:
+    """What the random part of the bounds rests on, in a sentence or two, and what more scans would buy."""
+    found = document["noise"]
+    more = found.get("more_scans")
+    buys = "" if more is None else f" {more['text']}"
+    if found["basis"] == "views":
+        return (
+            f"measured; the random part comes from how {found['views']} views differ where they overlap. What all "
+            "views have wrong alike does not show in it."
+        )
+    if found["basis"] == "declared":
+        if found["std_m"] == 0:
+            return "declared; the surface is taken as exact (noise 0), as a drawing is, and other doubts alone count."
+        who = "the scanner's certificate, read in scanmass's own way" if _certified(document) else "the pipeline file"
+        return f"declared; the scan does not show its own noise, and {who} says what it is.{buys}"
+    if found["basis"] == "upper_bound":
+        return f"an upper bound; nothing tells the scan's noise, so all that could be noise is counted as noise.{buys}"
+    return f"none; nothing tells the scan's noise.{buys}"
+
+
+def _certified(document: Document) -> bool:
+    return bool(document["noise"].get("declared_in") == "certificate")
 
 
 def no_bound(document: Document) -> str | None:

@@ -30,6 +30,64 @@ def _printed(document: Document, width: int = 80, terminal_is: bool = False) -> 
     return out.getvalue()
 
 
+def _lead(document: Document, *more: Any) -> list[str]:
+    return [row.label for row in rows(document, *more)[0].rows]
+
+
+def test_the_first_lines_tell_bounds_basis_doubt_next_and_lift(document: Document) -> None:
+    document["next_measurement"] = {
+        "text": "Scan the underside: that would shrink the bound of the centre of mass to about 40 %.",
+        "source": "underside not seen",
+        "mass_factor": 0.9,
+        "com_factor": 0.4,
+    }
+    document["noise"]["more_scans"] = {"text": "Two more scans would help.", "source": "x", "mass_factor": None}
+    document["assumptions"].append({"code": "solid-throughout", "text": "Solid."})
+    # The density's 0.2 kg times the reach 0.4 / (0.5 / 1.96) = 1.568: 0.31 kg; more than the bracket's 0.30 kg.
+    assert _lead(document) == [
+        "Bounds: mass 6.50 to 7.50 kg, centre of mass known to ± 0.40 / 0.40 / 1.5 mm along x / y / z, 95 % of the "
+        "time, given what is assumed below.",
+        "What was not seen is worth more than all other doubt of the centre of mass: scan it, or declare it.",
+        "Basis: an upper bound; nothing tells the scan's noise, so all that could be noise is counted as noise. Two "
+        "more scans would help.",
+        "Largest doubt of the mass: density of grey cast iron, declared, by itself ± 0.31 kg; of the centre of mass: "
+        "underside not seen, bracketed, by itself ± 1.0 mm.",
+        "Measure next: scan the underside: that would shrink the bound of the centre of mass to about 40 %.",
+        "None of the principal axes can be told from this scan; see below.",
+        "Before a lift: count on no less than 7.50 kg, add rigging, packing, base and water; cautions below. Solid is "
+        "assumed: a hollow, core or filling that was not scanned is in no bound.",
+    ]
+    assert "mass 14.3 to 16.6 lb" in _lead(document, "us")[0]
+    # 16.535 lb is rounded outward: a load is never called lighter than it may be.
+    assert "count on no less than 16.6 lb" in _lead(document, "us")[-1]
+
+
+@pytest.mark.parametrize(
+    ("noise", "said"),
+    [
+        ({"basis": "views", "views": 6}, "Basis: measured; the random part comes from how 6 views differ where"),
+        ({"basis": "declared"}, "Basis: declared; the scan does not show its own noise, and the pipeline file says"),
+        (
+            {"basis": "declared", "declared_in": "certificate"},
+            "Basis: declared; the scan does not show its own noise, and the scanner's certificate, read in scanmass's",
+        ),
+        ({"basis": "declared", "std_m": 0.0}, "Basis: declared; the surface is taken as exact (noise 0), as a drawing"),
+        ({"basis": "none"}, "Basis: none; nothing tells the scan's noise."),
+    ],
+)
+def test_the_basis_is_named(document: Document, noise: Document, said: str) -> None:
+    document["noise"] |= noise
+    assert any(line.startswith(said) for line in _lead(document))
+
+
+def test_no_upper_end_no_load(document: Document) -> None:
+    document["mass_kg"] |= {"std": None, "low": None, "high": None, "random": {"low": None, "high": None}}
+    lead = _lead(document)
+    assert not any("count on" in line for line in lead)
+    assert lead[-1].startswith("Before a lift: weigh it, for the mass below has no upper end.")
+    assert lead[1].startswith("Bounds: centre of mass known to ±")
+
+
 def test_kilograms_and_millimetres(document: Document) -> None:
     sections = _sections(document)
     weight = _lines(sections["Weight and volume"])
@@ -77,16 +135,16 @@ def test_no_difference_is_called_exact_only_where_declared(document: Document) -
 def test_what_was_not_seen_leads_when_it_is_larger(document: Document) -> None:
     lead = [row.label for row in rows(document)[0].rows]
     # The bracket of the centre spans 2 mm, its random part 1.2 mm; of the mass 0.2 kg against 0.8 kg.
-    assert lead[0].startswith("What was not seen is worth more than all other doubt of the centre of mass: scan it")
+    assert lead[1].startswith("What was not seen is worth more than all other doubt of the centre of mass: scan it")
     document["center_of_mass_m"]["bracket"]["low"][2] = 0.0496
-    assert not any("not seen" in row.label for row in rows(document)[0].rows)
+    assert not any(line.startswith("What was not seen") for line in _lead(document))
 
 
 def test_axes_in_words(document: Document) -> None:
     remarks = {row.label: row.remark for row in _sections(document)["Principal moments and axes"].rows}
     said = "axis undetermined: the moments are too close to tell, any direction will do"
     assert remarks == {"least": "", "middle": "", "greatest": said}
-    assert rows(document)[0].rows[-1].label.startswith("None of the principal axes can be told from this scan")
+    assert "None of the principal axes can be told from this scan; see below." in _lead(document)
     document["principal"][0] |= {"determined": True, "cone_deg": 3.21}
     for k in (1, 2):
         document["principal"][k] |= {"plane_normal": [1.0, 0.0, 0.0]}
@@ -133,7 +191,8 @@ def test_the_budget_names_its_greatest(document: Document) -> None:
         ("source, random if not named", "mass", "centre of mass"),
         ("scan noise", "0.020 kg, 10 %", "0.41 mm, 100 %"),
         ("density of grey cast iron, declared", "0.20 kg, 90 %", "none"),
-        ("underside not seen, bracket", "± 0.30 kg", "± 1.0 mm"),
+        ("underside not seen, bracketed", "± 0.30 kg", "± 1.0 mm"),
+        ("scan noise: scatter of the surface, alike over some distance, so that it does not average out", "", ""),
     ]
 
 
@@ -166,11 +225,14 @@ def test_notes_begin_like_sentences_and_end_with_their_code(document: Document) 
         },
         {"code": "polygons-fanned", "text": "a.ply: 3 faces were cut."},
     ]
-    assert [row.label[:6] for row in _sections(document)["Assumed"].rows] == ["A hole", "a.ply:"]
+    document["assumptions"].append({"code": "density-range", "text": "sandstone: any density"})
+    labels = [row.label for row in _sections(document)["Assumed"].rows]
+    assert [label[:6] for label in labels] == ["A hole", "a.ply:", "Sandst"]
+    assert all(label.endswith(".") for label in labels)
     lines = _printed(document).splitlines()
     start = lines.index("Assumed")
     assert lines[start + 1 : start + 4] == [
-        "  - A hole is closed half-way between a membrane and a cone of tangents there",
+        "  - A hole is closed half-way between a membrane and a cone of tangents there.",
         "    [hole-closed]",
         "  - a.ply: 3 faces were cut. [polygons-fanned]",
     ]
