@@ -10,7 +10,7 @@ import numpy.typing as npt
 from scipy.spatial import cKDTree
 
 from scanmass.cloud.clean import drop_edges
-from scanmass.cloud.cloud import Cloud, Removed
+from scanmass.cloud.cloud import REASONS, Cloud, Removed
 from scanmass.cloud.orient import orient
 from scanmass.cloud.outliers import outliers
 from scanmass.cloud.separate import Separated, separate
@@ -109,6 +109,7 @@ def _of_points(scans: Sequence[Scan], settings: Pipeline, seed: int, progress: P
         hollow_depth=settings.surface.hollow_depth,
         up=found.up,
         contact_height=found.contact_height,
+        floor_samples=_of_support(found.removed),
         progress=progress,
     )
     return _finished(
@@ -134,6 +135,12 @@ def _finer(scans: Sequence[Scan], thinned: Thinned, found: Separated, origin: Fl
     again = _moved(thin(scans, within=box, progress=progress).cloud, -origin)
     distance, _ = cKDTree(coarse.points).query(again.points, distance_upper_bound=margin)
     return again.keep(np.isfinite(distance))
+
+
+def _of_support(removed: Removed) -> FloatArray:
+    """The samples (k, 3) of what the object stood on."""
+    kinds = [REASONS.index("support plane"), REASONS.index("turntable")]
+    return removed.points[np.isin(removed.reason, kinds)]
 
 
 def _moved(cloud: Cloud, shift: FloatArray) -> Cloud:

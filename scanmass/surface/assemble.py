@@ -63,17 +63,16 @@ def closures(mesh: Mesh, spans: list[Span]) -> tuple[Closure, ...]:
     whole, _ = assembled(mesh, [replace(span, share=0.0) for span in spans])
     middle = whole.vertices.mean(axis=0)
     base = translated(whole.moments, -middle)
-    parts = []
+    parts, edges = [], []
     for span in spans:
-        columns = Columns.between(mesh.faces[span.region], span.near - middle, span.far - middle)
-        if span.bracket:
-            parts.append(columns)
-        else:
+        faces = mesh.faces[span.region]
+        columns = Columns.between(faces, span.near - middle, span.far - middle)
+        if not span.bracket:
             base = base + _at(columns, span.share)
-    found = _extremes(base, Columns.joined(parts))
-    lids = [Columns.between(mesh.faces[s.region], s.near - middle, s.lid - middle) for s in spans if s.lid is not None]
-    if lids:
-        found.append(("tangent cone", base + Columns.joined(lids).filled[:, -1].sum(axis=0)))
+            continue
+        parts.append(columns)
+        edges.append(columns if span.lid is None else Columns.between(faces, span.near - middle, span.lid - middle))
+    found = _extremes(base, Columns.joined(parts), Columns.joined(edges))
     return tuple(Closure(name, translated(moments, middle)) for name, moments in found)
 
 
@@ -83,11 +82,16 @@ def _at(columns: Columns, share: float) -> FloatArray:
     return total
 
 
-def _extremes(base: FloatArray, columns: Columns) -> list[tuple[str, FloatArray]]:
+def _extremes(base: FloatArray, columns: Columns, reach: Columns) -> list[tuple[str, FloatArray]]:
+    """The two plain shapes, and the extremes of volume and of each coordinate of the centre.
+
+    Each column is filled by itself, so an extreme is over every combination of gaps, filled, empty, or filled on one
+    side. ``reach``: columns that go as far as any shape allows, ``columns`` to where the best guess is taken from.
+    """
     volume = np.eye(10)[0]
     found = [("membrane", base), ("filled", base + columns.filled[:, -1].sum(axis=0))]
-    found += [("least volume", base + columns.best(-volume)), ("greatest volume", base + columns.best(volume))]
+    found += [("least volume", base + reach.best(-volume)), ("greatest volume", base + reach.best(volume))]
     for k, axis in enumerate(AXES):
         for sign, name in ((-1.0, "least"), (1.0, "greatest")):
-            found.append((f"{name} {axis}", columns.extreme_centroid(base, sign * np.eye(3)[k])))
+            found.append((f"{name} {axis}", reach.extreme_centroid(base, sign * np.eye(3)[k])))
     return found

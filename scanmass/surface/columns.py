@@ -58,6 +58,11 @@ class Columns:
         return total
 
 
+def swept_volume(faces: FaceArray, near: FloatArray, far: FloatArray) -> float:
+    """Volume between ``faces`` (c, 3) on vertices ``near`` (n, 3) and on ``far`` (n, 3), positive along the normals."""
+    return float(prism_moments(faces, near, far)[:, 0].sum())
+
+
 def prism_moments(faces: FaceArray, lower: FloatArray, upper: FloatArray) -> FloatArray:
     """Ten moments (m, 10), about the origin, of the solids between each face on ``lower`` and on ``upper`` (n, 3).
 

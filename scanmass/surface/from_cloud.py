@@ -23,6 +23,7 @@ def surface_from_cloud(
     hollow_depth: float | None = None,
     up: FloatArray | None = None,
     contact_height: float | None = None,
+    floor_samples: FloatArray | None = None,
     progress: Progress = silent,
 ) -> Surface:
     """Reconstruct, refine, close and check; see each for what it does, needs and raises."""
@@ -35,6 +36,7 @@ def surface_from_cloud(
         hollow_depth=hollow_depth,
         up=up,
         contact_height=contact_height,
+        floor_samples=floor_samples,
         progress=progress,
     )
     # What refinement changed of the seen surface, apart from what closing put in place of the unseen.

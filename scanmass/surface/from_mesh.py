@@ -10,8 +10,9 @@ from scanmass.geometry.edges import boundary_loops, count_edges, half_edges, she
 from scanmass.geometry.polyhedron import face_areas
 from scanmass.progress import Progress, silent
 from scanmass.seeds import stream
+from scanmass.surface.base import require_declared, standing_base
 from scanmass.surface.cap import capped
-from scanmass.surface.close import close_gaps, require_declared, standing_base
+from scanmass.surface.close import close_gaps
 from scanmass.surface.from_cloud import surface_from_cloud
 from scanmass.surface.mesh import FaceArray, FloatArray, Mesh
 from scanmass.surface.onesided import require_all_round
@@ -161,7 +162,9 @@ def _without_flecks(mesh: Mesh, notes: list[Note]) -> Mesh:
     flecks = [k for k in np.flatnonzero(share < FLECK) if count_edges(mesh.faces[labels == k]).open]
     if not flecks:
         return mesh
-    text = f"{len(flecks)} loose scrap(s) of surface, together {share[flecks].sum():.2%} of its area, were dropped"
+    text = (
+        f"{len(flecks)} loose scrap(s) of surface, together {100 * share[flecks].sum():.2g} % of its area, were dropped"
+    )
     notes.append(Note("flecks-dropped", text))
     return mesh.keep(~np.isin(labels, flecks))
 

@@ -11,6 +11,7 @@ from scipy.spatial import cKDTree
 
 from scanmass.geometry.harmonic import harmonic, neighbour_matrix
 from scanmass.geometry.loops import area_vector, rim_edges
+from scanmass.geometry.planes import plane_axes
 from scanmass.surface.mesh import FloatArray, Mesh
 from scanmass.surface.refine import vertex_normals
 
@@ -27,6 +28,11 @@ CONVERGING = 0.3
 STEEPEST_CONE = 2.0
 UNSURE_END = 0.5
 """Where samples end is known to so many pitches."""
+UNEVEN = 4.0
+"""A rim is level when its heights lie within so many pitches: of each end it is known to the two by which gaps are
+widened (``coverage.WIDEN``)."""
+TOP = 0.95
+"""... but for a twentieth of its vertices at either end."""
 NEAR_RIM = 6.0
 """Samples within so many grid cells of a rim vertex belong to the wall below it."""
 
@@ -64,21 +70,48 @@ def membrane(mesh: Mesh, region: Mask) -> FloatArray:
 
 
 def low_membrane(
-    mesh: Mesh, region: Mask, up: FloatArray, level: float, samples: FloatArray, pitch: float
+    mesh: Mesh, region: Mask, normals: FloatArray, up: FloatArray, level: float, samples: FloatArray, pitch: float
 ) -> FloatArray:
-    """A membrane under which nothing was seen: its rim goes down the walls as far as samples (k, 3) do.
+    """The least body over a gap that faces down, if nothing is recessed above its rim.
 
-    The region was widened past the edge of the data; ``samples`` (k, 3) near the rim tell how far down it reaches, to
-    half a ``pitch`` of theirs. A mesh's own rim (``pitch`` 0) stays where it is. Nowhere below ``up . r = level``.
+    The rim goes down the walls as far as samples do: the region was widened past the edge of the data; ``samples``
+    (k, 3) near the rim tell how far down it reaches, to half a ``pitch`` of theirs. A mesh's own rim (``pitch`` 0)
+    stays where it is. Nowhere below ``up . r = level``. Over a rim that is level but for what sampling leaves open the
+    least body ends at a membrane. Over one that is not, as of a table with legs, it ends as high as the rim does:
+    a membrane would hang down between the legs.
     """
     inside, rim = corners(mesh, region)
     ends = mesh.vertices @ up
     if pitch > 0.0:
         ends[rim] = np.minimum(ends[rim], _data_ends(mesh, region, rim, up, samples) + UNSURE_END * pitch)
-    result = _dropped(mesh, region, up, np.maximum(ends, np.minimum(level, mesh.vertices @ up)), inward=True)
+    ends = np.maximum(ends, np.minimum(level, mesh.vertices @ up))
+    result = _dropped(mesh, region, normals, up, ends, inward=True)
     inner = inside & ~rim
-    result[inner] += np.maximum(level - result[inner] @ up, 0.0)[:, None] * up
+    least = level
+    lowest, highest = np.quantile(ends[rim], [1.0 - TOP, TOP])
+    if highest - lowest > UNEVEN * max(pitch, mesh.resolution if pitch == 0.0 else 0.0):
+        least = max(level, float(highest))
+    heights = result[inner] @ up
+    result[inner] += (
+        np.maximum(np.minimum(least, _seen_above(mesh, region, up, result[inner])) - heights, 0.0)[:, None] * up
+    )
     return result
+
+
+def _seen_above(mesh: Mesh, region: Mask, up: FloatArray, places: FloatArray) -> FloatArray:
+    """Height (k,) of the lowest surface outside the gap that looks up over each of ``places`` (k, 3); inf for none."""
+    flat = plane_axes(up)
+    corner = mesh.vertices[mesh.faces[~region]]
+    rising = np.cross(corner[:, 1] - corner[:, 0], corner[:, 2] - corner[:, 0]) @ up > 0
+    middles = corner[rising].mean(axis=1)
+    result = np.full(len(places), np.inf)
+    if len(middles) == 0 or len(places) == 0:
+        return result
+    distance, index = cKDTree(middles @ flat.T).query(places @ flat.T, k=min(4, len(middles)))
+    tall = middles[index] @ up
+    above = (distance < mesh.resolution) & (tall > (places @ up)[:, None])
+    lowest: FloatArray = np.where(above, tall, np.inf).min(axis=1)
+    return lowest
 
 
 def _data_ends(mesh: Mesh, region: Mask, rim: Mask, up: FloatArray, samples: FloatArray) -> FloatArray:
@@ -118,7 +151,7 @@ def converges(mesh: Mesh, region: Mask, up: FloatArray) -> bool:
     return bool(np.mean(normals @ up) < -CONVERGING)
 
 
-def tangent_cone(mesh: Mesh, region: Mask) -> FloatArray:
+def tangent_cone(mesh: Mesh, region: Mask, normals: FloatArray) -> FloatArray:
     """Vertices (n, 3) with the region as far out as the surface's tangents at the rim lead.
 
     Over the membrane, each vertex rises by its distance to the rim times the slope of the seen surface there (2 at
@@ -139,7 +172,6 @@ def tangent_cone(mesh: Mesh, region: Mask) -> FloatArray:
             np.add.at(sums, edges[:, end], away[edges[:, 1 - end]])
         away = sums / 3.0
     away /= np.maximum(np.linalg.norm(away, axis=1), 1e-300)[:, None]
-    normals = _seen_normals(mesh, region)
     lean, face = np.einsum("ij,ij->i", normals, away), normals @ axis
     slope = np.clip(lean / np.maximum(face, 0.1), -STEEPEST_CONE, STEEPEST_CONE)[rim]
     inner = inside & ~rim
@@ -149,21 +181,25 @@ def tangent_cone(mesh: Mesh, region: Mask) -> FloatArray:
     return result
 
 
-def floor(mesh: Mesh, region: Mask, up: FloatArray, level: float, *, inward: bool) -> FloatArray:
-    """Vertices (n, 3) with the region flat in the plane ``up . r = level``, its rim dropped there along the walls.
+def floor(
+    mesh: Mesh, region: Mask, normals: FloatArray, up: FloatArray, level: float | FloatArray, *, inward: bool
+) -> FloatArray:
+    """Vertices (n, 3) with the region in the plane ``up . r = level``, its rim dropped there along the walls.
 
     Walls follow the slope of the seen surface at the rim where it leads outward, and, with ``inward``, also where it
-    leads inward; else they are plumb.
+    leads inward; else they are plumb. ``level`` (n,) may be of each vertex: the rim goes down to its own.
     """
-    return _dropped(mesh, region, up, np.full(len(mesh.vertices), level), inward=inward)
+    return _dropped(mesh, region, normals, up, np.broadcast_to(level, len(mesh.vertices)), inward=inward)
 
 
-def _dropped(mesh: Mesh, region: Mask, up: FloatArray, ends: FloatArray, *, inward: bool) -> FloatArray:
+def _dropped(
+    mesh: Mesh, region: Mask, normals: FloatArray, up: FloatArray, ends: FloatArray, *, inward: bool
+) -> FloatArray:
     """Vertices (n, 3) with the rim's taken along the walls to heights ``ends`` (n,), the region's harmonic between."""
     inside, rim = corners(mesh, region)
     result = mesh.vertices.copy()
     heights = mesh.vertices @ up
-    sideways = _slopes(mesh, region, rim, up, inward) * np.maximum(heights - ends, 0.0)[:, None]
+    sideways = _slopes(normals, rim, up, inward) * np.maximum(heights - ends, 0.0)[:, None]
     length = np.linalg.norm(sideways, axis=1)
     longest = LONGEST_SLOPE * float(np.ptp(mesh.vertices[~inside | rim], axis=0).max())
     sideways *= (np.minimum(length, longest) / np.where(length > 0, length, 1.0))[:, None]
@@ -171,9 +207,8 @@ def _dropped(mesh: Mesh, region: Mask, up: FloatArray, ends: FloatArray, *, inwa
     return harmonic(mesh.faces[region], result, rim)
 
 
-def _slopes(mesh: Mesh, region: Mask, rim: Mask, up: FloatArray, inward: bool) -> FloatArray:
+def _slopes(normals: FloatArray, rim: Mask, up: FloatArray, inward: bool) -> FloatArray:
     """Sideways way (n, 3) of the wall for each step down, at the rim's vertices."""
-    normals = _seen_normals(mesh, region)
     rise = normals @ up
     level = normals - rise[:, None] * up
     run = np.linalg.norm(level, axis=1)
@@ -183,11 +218,11 @@ def _slopes(mesh: Mesh, region: Mask, rim: Mask, up: FloatArray, inward: bool) -
     return ways
 
 
-def _seen_normals(mesh: Mesh, region: Mask) -> FloatArray:
-    """Unit normals (n, 3) of the seen faces at vertices, averaged over some rings of neighbours."""
-    seen = mesh.faces[~region]
-    normals = vertex_normals(mesh.vertices, seen)
-    ring = neighbour_matrix(seen, len(normals))
+def seen_normals(mesh: Mesh, seen: Mask) -> FloatArray:
+    """Unit normals (n, 3) of the ``seen`` (m,) faces at vertices, averaged over some rings of neighbours."""
+    faces = mesh.faces[seen]
+    normals = vertex_normals(mesh.vertices, faces)
+    ring = neighbour_matrix(faces, len(normals))
     for _ in range(SMOOTHING):
         normals = normals + ring @ normals
         normals /= np.maximum(np.linalg.norm(normals, axis=1), 1e-300)[:, None]
