@@ -80,9 +80,9 @@ def propagate(
 ) -> Propagated:
     """Adaptive Monte Carlo of ``model(rng, n) -> (n,)`` (JCGM 101:2008, 7.9).
 
-    Blocks of at least 1e4 / (1 - level) trials are added until twice the standard deviation of the block averages of
-    mean, standard deviation and both ends is at most half a unit in the last of ``digits`` digits of the
-    standard deviation.
+    Blocks are added until there are 1e4 / (1 - level) trials and twice the standard deviation of the block averages
+    of mean, standard deviation and both ends is at most half a unit in the last of ``digits`` digits of the standard
+    deviation.
     """
     block = max(10_000, int(np.ceil(1e4 / (1.0 - level) / 10.0)))
     draws: list[FloatArray] = []

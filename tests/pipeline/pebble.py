@@ -108,7 +108,7 @@ def write_off(path: Path, vertices: FloatArray, faces: IndexArray) -> Path:
     return path
 
 
-def settings(**scan: str) -> dict[str, Any]:
+def settings(**scan: Any) -> dict[str, Any]:
     """A pipeline for the pebble in millimetres, all of it seen; ``scan`` adds to its block."""
     return {
         "scan": {"unit": "mm", **scan},

@@ -207,6 +207,29 @@ def test_declared_noise(of_cloud: MassResult) -> None:
     assert (noise["basis"], noise["std_m"], noise["length_m"]) == ("declared", 1e-4, 0.0)
 
 
+def test_a_certificate_through_the_chain(scans: Path, view_files: Sequence[Path], of_views: MassResult) -> None:
+    certificate = {"PF": "0.4 mm", "PS": "0.2 mm", "E": "0.02 mm + L/10000", "length": "150 mm"}
+    alone = scanmass.measure(scans / "cloud.ply", pebble.settings(certificate=certificate, noise_length="0 mm"))
+    validate(alone.document)
+    assert (alone["noise"]["basis"], alone["noise"]["declared_in"]) == ("declared", "certificate")
+    assert alone["noise"]["std_m"] == pytest.approx(1e-4)
+    assert alone["noise"]["more_scans"]["text"].startswith("Two more scans would measure the noise")
+    assert "certificate-own-reading" in codes(alone)
+    assert "scale-taken-as-exact" not in codes(alone)
+    assert "beyond-certified-length" in codes(alone, "warnings")
+    # E over the longest tested length: 0.02 / 150 + 1 / 10000 = 0.0002333 of a length, three times that of the mass.
+    mass = alone["mass_kg"]["value"]
+    assert row(alone, "scale")["mass_std_kg"] == pytest.approx(3 * (0.02 / 150 + 1e-4) / np.sqrt(3) * mass, rel=1e-6)
+    offset = alone["surface"]["area_m2"] * 1e-4 / np.sqrt(3) * pebble.DENSITY
+    assert row(alone, "surface offset")["mass_std_kg"] == pytest.approx(offset, rel=1e-6)
+    # Views show their own noise: of the certificate only what all of them share is added.
+    both = scanmass.measure(view_files, pebble.settings(certificate=certificate))
+    assert (both["noise"]["basis"], both["noise"]["declared_in"]) == ("views", None)
+    added = {r["source"] for r in both["budget"]} - {r["source"] for r in of_views["budget"]}
+    assert added == {"scale", "surface offset"}
+    assert row(both, "scan noise")["mass_std_kg"] == row(of_views, "scan noise")["mass_std_kg"]
+
+
 def test_nothing_is_claimed_of_a_small_mesh_without_noise(tmp_path: Path) -> None:
     vertices, faces = pebble.mesh(300)
     scan = pebble.write_off(tmp_path / "small.off", 1000.0 * vertices, faces)

@@ -2,8 +2,10 @@
 
 import numpy as np
 import pytest
+from scipy.stats import chi2, ncx2
 from scipy.stats import t as student
 
+from scanmass.doubt import Figure
 from scanmass.uncertainty.intervals import (
     acceleration,
     bca,
@@ -34,22 +36,24 @@ def _sum(*terms):
 
 
 def _normal(std):
-    return lambda rng, n: rng.normal(0, std, n)
+    return Figure.normal(0.0, std).draw
 
 
 def _rectangular(std):
-    return lambda rng, n: rng.uniform(-std * np.sqrt(3), std * np.sqrt(3), n)
+    return Figure.uniform(-std * np.sqrt(3), std * np.sqrt(3)).draw
 
 
 @pytest.mark.parametrize(
-    ("name", "terms", "u", "end"),
+    ("name", "terms", "u", "end", "linear"),
     [
-        ("9.2.2 four normal", [_normal(1)] * 4, 2.0, 3.9200),
-        ("9.2.3 four rectangular, exact end", [_rectangular(1)] * 4, 2.0, 3.8794),
-        ("9.2.4 one rectangular dominates", [_rectangular(1)] * 3 + [_rectangular(10)], np.sqrt(103), 17.0),
+        ("9.2.2 four normal", [_normal(1)] * 4, 2.0, 3.9200, 3.92),
+        ("9.2.3 four rectangular, exact end", [_rectangular(1)] * 4, 2.0, 3.8794, 3.92),
+        ("9.2.4 one rectangular dominates", [_rectangular(1)] * 3 + [_rectangular(10)], np.sqrt(103), 17.0, 19.9),
     ],
 )
-def test_jcgm_101_additive_models(name, terms, u, end):
+def test_jcgm_101_additive_models(name, terms, u, end, linear):
+    # The linear method (GUM): root of the sum of squares times the normal factor, as printed beside the Monte Carlo.
+    assert coverage_factor(0.95, None) * u == pytest.approx(linear, abs=0.05 if u > 9 else 0.005)
     found = propagate(_sum(*terms), np.random.default_rng(1), digits=3)
     assert found.settled
     # The stop rule leaves twice the error of the block averages at half a unit of the third digit: 0.005 (0.05 at 10).
@@ -61,8 +65,9 @@ def test_jcgm_101_additive_models(name, terms, u, end):
 
 def test_jcgm_101_mass_calibration():
     def model(rng, n):
-        mass, extra = rng.normal(100_000, 0.050, n), rng.normal(1.234, 0.020, n)
-        air, weight, reference = rng.uniform(1.10, 1.30, n), rng.uniform(7000, 9000, n), rng.uniform(7950, 8050, n)
+        mass, extra = Figure.normal(100_000.0, 0.050).draw(rng, n), Figure.normal(1.234, 0.020).draw(rng, n)
+        ranges = ((1.10, 1.30), (7000.0, 9000.0), (7950.0, 8050.0))
+        air, weight, reference = (Figure.uniform(*ends).draw(rng, n) for ends in ranges)
         return (mass + extra) * (1 + (air - 1.2) * (1 / weight - 1 / reference)) - 100_000
 
     found = propagate(model, np.random.default_rng(2), digits=3)
@@ -72,6 +77,8 @@ def test_jcgm_101_mass_calibration():
     assert found.std == pytest.approx(0.0754, abs=0.0003)
     assert (low, high) == pytest.approx((1.0834, 1.3825), abs=0.004)
     assert high - low == pytest.approx(0.299, abs=0.001)
+    # To first order the densities do not count at all (GUM: 0.0539); the product of two doubts is missed there.
+    assert found.std > 1.3 * np.hypot(0.050, 0.020)
 
 
 @pytest.mark.parametrize(("x1", "value", "u", "high"), [(0.0, 50, 50, 150), (0.010, 150, 112, 366)])
@@ -86,6 +93,12 @@ def test_jcgm_101_reflection(x1, value, u, high):
     assert found.std == pytest.approx(u, abs=0.7)
     assert low == pytest.approx(0, abs=0.5)
     assert top == pytest.approx(high, abs=1.5)
+    # Exactly: 25 times a noncentral chi-square of two degrees of freedom; the median and the tail by its own quantile.
+    law = ncx2(2, (x1 / 0.005) ** 2) if x1 else chi2(2)
+    ends = central(found.draws, 0.95)
+    # Error of a quantile, root of p (1 - p) / n over the density, 3 of them: below 0.4 % of the upper end.
+    assert ends[1] == pytest.approx(25 * law.ppf(0.975), rel=0.004)
+    assert ends[0] == pytest.approx(25 * law.ppf(0.025), abs=0.4)
 
 
 def test_npl_logarithm_is_asymmetric():
@@ -97,6 +110,18 @@ def test_npl_logarithm_is_asymmetric():
     assert found.std == pytest.approx(0.606, abs=0.002)
     # The printed interval [-1.895, 0.095] (exact lower end ln 0.15) is the shortest one.
     assert shortest(found.draws, 0.95) == pytest.approx((np.log(0.15), 0.095), abs=0.01)
+
+
+def test_trials_and_stop_rule_are_those_of_the_guide():
+    """JCGM 101:2008, 7.2.2 and 7.9.4: 1e4 / (1 - p) trials at least, and twice the error of every average, worked out
+    anew from the draws, at most half a unit of the last digit."""
+    found = propagate(_normal(1), np.random.default_rng(9), level=0.99, digits=2)
+    assert found.settled
+    assert len(found.draws) >= 1e4 / (1 - 0.99)
+    blocks = found.draws.reshape(-1, 100_000)
+    rows = [[b.mean(), b.std(ddof=1), *central(b, 0.99)] for b in blocks]
+    # Two digits of 1.0: the last one is worth 0.1.
+    assert np.all(2 * np.std(rows, axis=0, ddof=1) / np.sqrt(len(rows)) <= 0.05)
 
 
 def test_stop_rule_reports_a_model_that_does_not_settle():
