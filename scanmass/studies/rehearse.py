@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import multiprocessing
+import signal
 import tempfile
 from collections.abc import Iterator, Sequence
 from concurrent.futures import ProcessPoolExecutor, as_completed
@@ -92,11 +93,20 @@ def _entries(plan: Plan, seed: int, missing: Sequence[int], workers: int) -> Ite
         for index in missing:
             yield rehearse_one(plan, seed, index)
         return
-    # Fresh processes: threads of kernels and of open3d do not survive a fork.
-    pool = ProcessPoolExecutor(workers, mp_context=multiprocessing.get_context("spawn"))
+    others = multiprocessing.active_children()
+    # Fresh processes: threads of kernels and of open3d do not survive a fork. An interruption is for this one alone.
+    fresh = multiprocessing.get_context("spawn")
+    pool = ProcessPoolExecutor(
+        workers, mp_context=fresh, initializer=signal.signal, initargs=(signal.SIGINT, signal.SIG_IGN)
+    )
     try:
         for future in as_completed([pool.submit(rehearse_one, plan, seed, index) for index in missing]):
             yield future.result()
+    except BaseException:
+        for child in multiprocessing.active_children():
+            if child not in others:
+                child.terminate()
+        raise
     finally:
         pool.shutdown(cancel_futures=True)
 
