@@ -16,9 +16,10 @@ from scanmass.pipeline.models import Pipeline
 from scanmass.pipeline.places import height, offsets
 from scanmass.pipeline.shape import Shape
 from scanmass.scans.scan import Scan
-from scanmass.uncertainty.advice import more_scans, next_measurement, standing
+from scanmass.uncertainty.advice import more_scans, next_measurement
 from scanmass.uncertainty.bounds import Bounds
 from scanmass.uncertainty.document import advice_block, as_document
+from scanmass.uncertainty.measurements import standing
 from scanmass.uncertainty.reading import Reading
 
 FloatArray = npt.NDArray[np.float64]

@@ -91,7 +91,7 @@ def rows(document: Document, name: System = "metric", understood: Iterable[Under
         Section("Warnings", "warning", tuple(_notes(document["warnings"]))),
         Section("Weight and volume", "result", tuple(_weight(document, use)), _level(document)),
         Section("Centre of mass", "result", tuple(_centre(document, use)), "In the coordinates of the first scan."),
-        Section("Bracketed: what was not seen", "bracketed", tuple(_bracketed(document, use)), _BRACKET),
+        Section(wording.bracketed(document), "bracketed", tuple(_bracketed(document, use)), _BRACKET),
         Section("Where the doubt comes from", "result", tuple(_budget(document, use)), _dominant(document, use)),
         Section("Principal moments and axes", "result", tuple(_principal(document, use)), _TURNING),
         Section("Inertia tensor", "result", tuple(_inertia(document, use)), _sign(document)),
@@ -107,7 +107,7 @@ def rows(document: Document, name: System = "metric", understood: Iterable[Under
 
 _TURNING = "How hard it is to set turning about its centre of mass: least, middle and greatest, and the axis of each."
 _READ = "As read from the pipeline file, in metric units."
-_BRACKET = "Least and greatest over the shapes it could have, taken alone. Not random: no percentage attaches to it."
+_BRACKET = "Least and greatest over all it could be, taken alone. Not random: no percentage attaches to it."
 
 
 def _level(document: Document) -> str:
@@ -163,7 +163,7 @@ def _centre(document: Document, use: Rulers) -> Iterator[Row]:
         radii = use.length.stds(region["radii_m"], " x ")
         remark = f"{share(region['level'])} region of the random and declared doubt, all three axes together"
         if centre["bracket"] is not None:
-            remark += "; what was not seen comes on top"
+            remark += "; what is bracketed comes on top"
         yield Row("region, half-axes", "", radii, remark)
 
 

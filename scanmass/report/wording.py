@@ -23,6 +23,9 @@ CAUTIONS = (
 KINDS = {"random": "", "declared": ", declared", "bracket": ", bracketed"}
 """What a source's name carries behind it; most are random."""
 
+COMMON_ERROR = "pose or incidence error common to all views"
+"""The budget's row of what laying the views on one another anew would change."""
+
 SOURCES = {
     "scan noise": "scatter of the surface, alike over some distance, so that it does not average out",
     "scan noise (upper bound)": "all that strays from a coarse surface, true shape and scatter together",
@@ -32,8 +35,7 @@ SOURCES = {
     "scale": "the scanner's lengths as a whole too long or too short",
     "surface offset": "the whole surface too far out or too far in",
     "unseen surface": "between the least and the greatest shape that what was not scanned could have",
-    "pose or incidence error common to all views": "what all views could have wrong alike; a known length on the "
-    "object or a weighing settles it",
+    COMMON_ERROR: "what all views could have wrong alike; a known length on the object or a weighing settles it",
 }
 """The budget's sources in plain words; densities speak for themselves."""
 
@@ -149,16 +151,46 @@ def dominant(document: Document, of: str, ruler: Ruler) -> str | None:
 
 
 def bracket_leads(document: Document) -> str | None:
-    """Says so where what was not seen is worth more than all random and declared doubt."""
-    led = []
-    for name, field in (("mass", "mass_kg"), ("centre of mass", "center_of_mass_m")):
+    """Says so where what is bracketed is worth more than all random and declared doubt, and what settles it."""
+    led: dict[bool, list[str]] = {}
+    for name, field, key in (("mass", "mass_kg", "mass_half_range_kg"), ("centre of mass", *_CENTRE)):
         if _wider(document[field]["bracket"], document[field]["random"]):
-            led.append(name)
-    if not led:
-        return None
-    return (
-        f"What was not seen is worth more than all other doubt of the {' and the '.join(led)}: scan it, or declare it."
-    )
+            sizes = {row["source"]: _largest(row[key]) for row in document["budget"] if row["kind"] == "bracket"}
+            common = max(sizes, key=sizes.__getitem__, default="") == COMMON_ERROR
+            led.setdefault(common, []).append(name)
+    said = []
+    if False in led:
+        said.append(
+            f"What was not seen is worth more than all other doubt of the {' and the '.join(led[False])}: scan it, or "
+            "declare it."
+        )
+    if True in led:
+        said.append(
+            "What all views may have wrong alike is worth more than all other doubt of the "
+            f"{' and the '.join(led[True])}: one known length on the object, or a weighing, settles it."
+        )
+    return " ".join(said) or None
+
+
+_CENTRE = ("center_of_mass_m", "com_half_range_m")
+
+
+def bracketed(document: Document) -> str:
+    """The heading of what is bracketed, by what is."""
+    sources = {row["source"] for row in document["budget"] if row["kind"] == "bracket"}
+    kinds = [
+        said
+        for said, there in (
+            ("what was not seen", bool(sources - {COMMON_ERROR}) or not sources),
+            ("what all views may have wrong alike", COMMON_ERROR in sources),
+        )
+        if there
+    ]
+    return f"Bracketed: {', and '.join(kinds)}"
+
+
+def _largest(size: float | list[float] | None) -> float:
+    return max((abs(x) for x in (size if isinstance(size, list) else [size or 0.0])), default=0.0)
 
 
 def _wider(bracket: Document | None, random: Document) -> bool:

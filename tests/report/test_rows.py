@@ -140,6 +140,21 @@ def test_what_was_not_seen_leads_when_it_is_larger(document: Document) -> None:
     assert not any(line.startswith("What was not seen") for line in _lead(document))
 
 
+def test_what_all_views_share_is_called_so(document: Document) -> None:
+    document["budget"][2]["source"] = "pose or incidence error common to all views"
+    said = (
+        "What all views may have wrong alike is worth more than all other doubt of the centre of mass: one known length"
+    )
+    assert any(line.startswith(said) for line in _lead(document))
+    kinds = {section.kind: section.title for section in rows(document)}
+    assert kinds["bracketed"] == "Bracketed: what all views may have wrong alike"
+    unseen = {"source": "unseen surface", "com_half_range_m": [0.0, 0.0, 3e-3]}
+    document["budget"].append(document["budget"][2] | unseen)
+    assert any(line.startswith("What was not seen is worth more") for line in _lead(document))
+    both = "Bracketed: what was not seen, and what all views may have wrong alike"
+    assert both in [section.title for section in rows(document)]
+
+
 def test_axes_in_words(document: Document) -> None:
     remarks = {row.label: row.remark for row in _sections(document)["Principal moments and axes"].rows}
     said = "axis undetermined: the moments are too close to tell, any direction will do"

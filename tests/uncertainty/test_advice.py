@@ -5,8 +5,9 @@ from math import sqrt
 import numpy as np
 import pytest
 
-from scanmass.uncertainty.advice import COMMON_ERROR, LENGTH, WEIGHING, Standing, more_scans, next_measurement
+from scanmass.uncertainty.advice import more_scans, next_measurement
 from scanmass.uncertainty.budget import BudgetRow
+from scanmass.uncertainty.measurements import COMMON_ERROR, LENGTH, WEIGHING, Standing, factors_left, measurements
 
 MASS = 100.0
 
@@ -88,10 +89,9 @@ def test_a_common_error_asks_for_a_length_or_a_scale():
 
 def test_a_scale_settles_a_common_error_only_where_the_density_is_known():
     settled = _now(_row(COMMON_ERROR, 3.0, 2e-3, "bracket"), _row("density", 0.0, kind="declared"), basis="declared")
-    from scanmass.uncertainty.advice import _factors, _measurements
 
     def weighed(now):
-        return next(_factors(now, m) for m in _measurements(now) if m.mass is not None)
+        return next(factors_left(now, m) for m in measurements(now) if m.mass is not None)
 
     assert weighed(settled)[1] == pytest.approx(WEIGHING * MASS / 3.0)
     unsettled = _now(_row(COMMON_ERROR, 3.0, 2e-3, "bracket"), _row("density", 5.0, kind="declared"))
