@@ -13,7 +13,7 @@ from importlib.metadata import version
 from pathlib import Path
 from typing import Any
 
-from scanmass.errors import Declined, UserFault
+from scanmass.errors import Declined, PipelineFault, UserFault
 from scanmass.pipeline import run
 from scanmass.progress import Progress, silent
 from scanmass.studies.rehearse_ledger import Ledger
@@ -81,6 +81,8 @@ def rehearse_one(plan: Plan, seed: int, index: int) -> Plain:
         paths = simulate(plan, seed, index, here)
         try:
             result = run.measure(paths, settings, seed=index)
+        except PipelineFault:
+            raise  # of every scan alike: no outcome of this one
         except UserFault as fault:
             return {"scan": index, "failed": str(fault)}
         return {"scan": index, **score(result.document, plan.truth)}

@@ -235,8 +235,9 @@ def _truth(vertices: FloatArray, faces: IndexArray, density: float, origin: Floa
 
 def _settings(settings: Pipeline, density: float) -> Pipeline:
     """The user's own settings, in metres, in one frame, with a density that is known: only the shape is rehearsed."""
-    poses = {"poses": None} if "poses" in type(settings.scan).model_fields else {}
-    scan = settings.scan.model_copy(update={"unit": "m", "frames": "shared", **poses})
+    # Views are simulated in the frame they were brought to; a place given for each file would move them again.
+    placed = {name: f.get_default() for name, f in type(settings.scan).model_fields.items() if name == "poses"}
+    scan = settings.scan.model_copy(update={"unit": "m", "frames": "shared", **placed})
     body = settings.inside.body.model_copy(update={"material": None, "density": Figure.exact(density)})
     inside = settings.inside.model_copy(update={"body": body})
     return settings.model_copy(update={"scan": scan, "inside": inside})
