@@ -29,7 +29,8 @@ COMMON_ERROR = "pose or incidence error common to all views"
 SOURCES = {
     "scan noise": "scatter of the surface, alike over some distance, so that it does not average out",
     "scan noise (upper bound)": "all that strays from a coarse surface, true shape and scatter together",
-    "view poses": "how well the views were laid on one another",
+    "view shifts": "how well the views were laid on one another (shifts)",
+    "view turns": "how well the views were laid on one another (turns)",
     "reconstruction": "what fitting a surface through the points may have moved",
     "edges finer than the points": "corners and ridges that fall between the points",
     "scale": "the scanner's lengths as a whole too long or too short",
@@ -53,6 +54,22 @@ def underside(document: Document) -> str:
     if kind == "unknown" and document["mass_kg"]["bracket"] is None:
         return "the underside is not declared; no part is bracketed"
     return _UNDERSIDES[kind]
+
+
+def views(document: Document, ruler: Ruler) -> str:
+    """How several views came into one frame, and how well they lie on each other."""
+    block = document["views"]
+    how = {
+        "shared": "taken as lying in one frame",
+        "own": "aligned to the first",
+        "poses": "laid by the poses of the pipeline file",
+    }[block["frames"]]
+    pairs = block["pairs"]
+    if not pairs:
+        return f"{how}; no two overlap enough to check it"
+    worst = max(pair["rms_m"] for pair in pairs)
+    met = "1 pair overlaps" if len(pairs) == 1 else f"{len(pairs)} pairs overlap"
+    return f"{how}; {met}, at most {ruler.std(worst)} rms apart"
 
 
 def noise(document: Document, length: Ruler) -> str:

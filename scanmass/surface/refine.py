@@ -40,7 +40,7 @@ def refine(mesh: Mesh, cloud: Cloud, *, rounds: int = ROUNDS, progress: Progress
     points = np.ascontiguousarray(cloud.points - middle)
     owner = nearest(vertices, 1, points)[1][:, 0]  # vertices move by far less than their spacing: asked once
     start, fan = _fans(mesh.faces, len(vertices))
-    ring = _ring(mesh.faces, len(vertices))
+    ring = ring_of(mesh.faces, len(vertices))
     weight = cloud.count.astype(np.float64)
     for step in range(rounds):
         progress("refine", step, rounds)
@@ -48,33 +48,43 @@ def refine(mesh: Mesh, cloud: Cloud, *, rounds: int = ROUNDS, progress: Progress
         pull, total, seen = _pulls(
             points, weight, owner, vertices, normals, mesh.faces, start, fan, REACH * mesh.resolution
         )
-        # A rounded corner of the mesh gathers the samples of both faces on less area than they came from. Weighed by
-        # samples, it would push its neighbours out for it (a fifth of the pitch squared for each metre of edge).
-        area = _areas(vertices, mesh.faces) / np.maximum(seen, FEW)
-        share = np.where(seen > 0, area * seen / np.where(total > 0, total, 1.0), 0.0)
-        move = _means(ring, share * pull, share * total, seen)
+        move = mean_pulls(ring, vertex_areas(vertices, mesh.faces), pull, total, seen)
         vertices = vertices + np.clip(move, -mesh.resolution, mesh.resolution)[:, None] * normals
     progress("refine", rounds, rounds)
     return mesh.moved(vertices + middle)
 
 
-def _means(ring: csr_matrix, pull: FloatArray, total: FloatArray, seen: FloatArray) -> FloatArray:
-    """Mean pull (n,) on each vertex over the smallest patch round it that holds enough samples; 0 where none does."""
+def mean_pulls(ring: csr_matrix, area: FloatArray, pull: FloatArray, total: FloatArray, seen: FloatArray) -> FloatArray:
+    """Mean pull on each vertex over the smallest patch round it that holds enough samples; 0 where none does.
+
+    Parameters
+    ----------
+    ring : (n, n), see :func:`ring_of`
+    area : (n,), see :func:`vertex_areas`
+    pull : (n,) or (n, k), sums of pulls times weights at each vertex
+    total, seen : (n,), sums of weights, and of samples
+    """
+    # A rounded corner of the mesh gathers the samples of both faces on less area than they came from. Weighed by
+    # samples, it would push its neighbours out for it (a fifth of the pitch squared for each metre of edge).
+    each = np.where(seen > 0, area / np.maximum(seen, FEW) * seen / np.where(total > 0, total, 1.0), 0.0)
+    total = each * total
+    pull = each * pull if pull.ndim == 1 else each[:, None] * pull
     degree = np.asarray(ring.sum(axis=1)).ravel()
-    mean = np.zeros(len(pull))
+    mean = np.zeros_like(pull)
     settled = np.zeros(len(pull), np.bool_)
     for rings in range(1, RINGS + 1):
-        pull, total, seen = (ring @ share / degree for share in (pull, total, seen))
+        total, seen = ring @ total / degree, ring @ seen / degree
+        pull = ring @ pull / (degree if pull.ndim == 1 else degree[:, None])
         # A patch of k rings holds some 1 + 3 k (k + 1) vertices.
         enough = ~settled & (seen * (1 + 3 * rings * (rings + 1)) >= LEAST_POINTS)
-        mean[enough] = pull[enough] / total[enough]
+        mean[enough] = pull[enough] / (total[enough] if pull.ndim == 1 else total[enough, None])
         settled |= enough
         if settled.all():
             break
     return mean
 
 
-def _areas(vertices: FloatArray, faces: FaceArray) -> FloatArray:
+def vertex_areas(vertices: FloatArray, faces: FaceArray) -> FloatArray:
     """Area (n,) that each vertex stands for: a third of the faces round it."""
     area, _ = face_areas(vertices, faces)
     owned: FloatArray = np.bincount(faces.ravel(), np.repeat(area / 3.0, 3), minlength=len(vertices)).astype(np.float64)
@@ -101,7 +111,7 @@ def _fans(faces: FaceArray, n: int) -> tuple[FaceArray, FaceArray]:
     return start, (np.argsort(corners, kind="stable") // 3).astype(np.int64)
 
 
-def _ring(faces: FaceArray, n: int) -> csr_matrix:
+def ring_of(faces: FaceArray, n: int) -> csr_matrix:
     """Sum over a vertex and its neighbours, as a matrix (n, n) of ones."""
     edges = half_edges(faces)
     rows = np.concatenate([edges[:, 0], edges[:, 1], np.arange(n)])

@@ -184,7 +184,7 @@ def _noise(
     level: float,
 ) -> NoiseModel:
     if noise.enough_views(patched):
-        return noise.from_views(patched, level)
+        return noise.from_views(patched)
     if declared.noise_std is not None:
         return from_declaration(patched, declared)
     model = None

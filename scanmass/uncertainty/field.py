@@ -10,6 +10,7 @@ import numpy.typing as npt
 from scipy.optimize import nnls
 from scipy.spatial.distance import cdist
 
+from scanmass.uncertainty.following import shares_of
 from scanmass.uncertainty.patches import Patches
 
 FloatArray = npt.NDArray[np.float64]
@@ -45,45 +46,79 @@ class Field:
     degrees_of_freedom: float
 
 
+@dataclass(frozen=True)
+class _Bins:
+    """Products of residuals by distance. ``value`` (b,): covariance; ``middle`` (b,): distance, the first bin 0;
+    ``trust`` (b,): one over the standard deviation of ``value`` by patches' own noise; ``white``: variance that the
+    scatter within patches brings to the first bin."""
+
+    value: FloatArray
+    middle: FloatArray
+    trust: FloatArray
+    white: float
+
+
 def fit_field(patches: Patches, left: FloatArray) -> Field:
     """Field and own noise from residuals ``left`` (J, V) without each view's motion, NaN where unseen.
 
-    For patches j, l and the set S of views that saw both, m = |S|:
-    Y = (m sum r_ja r_la - sum r_ja sum r_la) / 2 has the expectation m (m - 1)/2 x covariance, whatever the shape:
-    what all views share cancels. Y is binned by distance below 0.35 of the size; one field of each shape and length
-    is fitted without negative parts, and the best kept. Taking off each view's motion takes some of a long field with
-    it: in simulations lengths of 0.07 of the size came out at 0.05 to 0.07, of 0.2 at 0.08, the poses holding the rest.
+    One field of each shape and length is fitted to the products of residuals by distance, without negative parts,
+    and the best kept. Taking off each view's motion takes some of a long field with it; the poses hold the rest.
     """
     clean = _clean(left)
-    with_view = np.isfinite(clean).astype(np.float64)
-    r = np.nan_to_num(clean)
-    common = with_view @ with_view.T
-    product = 0.5 * (common * (r @ r.T) - (r @ with_view.T) * (with_view @ r.T))
-    distance = cdist(patches.centres, patches.centres)
-    edges = np.concatenate([[-1.0], np.linspace(0.0, _REACH * patches.size, _BINS + 1)])
-    place = np.searchsorted(edges, distance, side="left") - 1
-    usable = (common >= 2) & (place <= _BINS)
-    place, common, product, distance = place[usable], common[usable], product[usable], distance[usable]
-    # Weight (m - 1) per unit of covariance: with it Y / (m (m - 1) / 2) sums to 2 Y / m.
-    weight = np.bincount(place, common - 1.0, _BINS + 1)
-    filled = weight > 0
-    value = np.bincount(place, 2.0 * product / common, _BINS + 1)[filled] / weight[filled]
-    middle = np.bincount(place, (common - 1.0) * distance, _BINS + 1)[filled] / weight[filled]
-    trust = np.sqrt(weight[filled])
-    alone = (middle == 0).astype(np.float64)
+    bins = _products(patches, clean)
+    own = (bins.middle == 0).astype(np.float64)
     best = None
     for shape in ("gaussian", "exponential"):
         for length in _LENGTHS * patches.size:
-            columns = np.stack([correlation(middle, float(length), shape), alone], axis=1)
-            amounts, misfit = nnls(columns * trust[:, None], value * trust)
+            columns = np.stack([correlation(bins.middle, float(length), shape), own], axis=1)
+            amounts, misfit = nnls(columns * bins.trust[:, None], bins.value * bins.trust)
             if best is None or misfit < best[0]:
                 best = (misfit, amounts, float(length), shape)
     assert best is not None
     _, amounts, length, shape = best
-    white = _white(patches, clean)
-    own = max(float(amounts[1]) - white, 0.0)
-    nu = _degrees(patches, with_view, length, shape)
-    return Field(float(np.sqrt(amounts[0])), length, shape, float(np.sqrt(own)), nu)  # type: ignore[arg-type]
+    beyond = max(float(amounts[1]) - bins.white, 0.0)
+    nu = _degrees(patches, np.isfinite(clean).astype(np.float64), length, shape)
+    return Field(float(np.sqrt(amounts[0])), length, shape, float(np.sqrt(beyond)), nu)  # type: ignore[arg-type]
+
+
+def _products(patches: Patches, clean: FloatArray) -> _Bins:
+    """Between-view products of residuals, weighed as the surface weighs the views.
+
+    With each view's share a_jv of its patch and u_jv = r_jv - sum_w a_jw r_jw, what all views share cancels, and
+    sum_v a_jv a_lv u_jv u_lv has the expectation C_jl sum_v a_jv a_lv (1 - a_jv - a_lv + sum_w a_jw a_lw) for one
+    covariance C in every view (leverages, as in MacKinnon & White 1985, J. Econometrics 29:305). Weighed by shares and
+    areas like the surface itself, the variance found is the one that the surface feels, also where noise grows with
+    incidence or one view is worse than the rest. Distances below 0.35 of the size.
+    """
+    used = np.isfinite(clean)
+    share = shares_of(np.where(used, patches.counts, 0.0))
+    r = np.nan_to_num(clean)
+    about = np.where(used, r - (share * r).sum(axis=1)[:, None], 0.0)
+    weight = share * patches.areas[:, None]
+    both = weight @ weight.T
+    expected = both * (1.0 + share @ share.T) - (weight * share) @ weight.T - weight @ (weight * share).T
+    product = (weight * about) @ (weight * about).T
+    white = np.where(used, scatter(patches), 0.0)
+    doubt = (weight**2 * white) @ (weight**2 * white).T
+    edges = np.linspace(0.0, _REACH * patches.size, _BINS + 1)
+    j, k = np.triu_indices(len(share))
+    distance = np.linalg.norm(patches.centres[j] - patches.centres[k], axis=1)
+    usable = (expected[j, k] > 0) & (distance <= edges[-1])
+    j, k, distance = j[usable], k[usable], distance[usable]
+    place = np.searchsorted(edges, distance, side="left")
+    place[j == k] = 0
+
+    def summed(each: FloatArray) -> FloatArray:
+        return np.bincount(place, each, _BINS + 1).astype(np.float64)
+
+    total = summed(expected[j, k])
+    filled = total > 0
+    total = total[filled]
+    value, middle = summed(product[j, k])[filled] / total, summed(expected[j, k] * distance)[filled] / total
+    spread = np.sqrt(summed(doubt[j, k])[filled])
+    trust = total / np.where(spread > 0, spread, 1.0)
+    seen = (weight**2 * white * (1.0 - 2.0 * share + (share**2).sum(axis=1)[:, None])).sum()
+    return _Bins(value, middle, trust, float(seen / total[0]))
 
 
 def _clean(left: FloatArray) -> FloatArray:
@@ -98,10 +133,12 @@ def _clean(left: FloatArray) -> FloatArray:
     return result
 
 
-def _white(patches: Patches, clean: FloatArray) -> float:
-    """Mean variance of a patch's mean from the scatter within it."""
-    used = np.isfinite(clean) & np.isfinite(patches.within) & (patches.counts > 0)
-    return float(np.mean(patches.within[used] / patches.counts[used])) if used.any() else 0.0
+def scatter(patches: Patches) -> FloatArray:
+    """(J, V): variance of a patch's mean from the scatter of points within it; typical where points are few."""
+    known = np.isfinite(patches.within)
+    typical = float(np.median(patches.within[known])) if known.any() else 0.0
+    result: FloatArray = np.where(known, patches.within, typical) / np.maximum(patches.counts, 1.0)
+    return result
 
 
 def _degrees(patches: Patches, with_view: FloatArray, length: float, shape: str) -> float:

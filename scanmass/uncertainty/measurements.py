@@ -78,7 +78,7 @@ def measurements(now: Standing) -> Iterator[Measurement]:
         yield Measurement(what, dict.fromkeys(brackets, 0.0))
     if now.basis == "views":
         what = f"scan it from twice as many views ({2 * now.views})"
-        yield Measurement(what, dict.fromkeys(("scan noise", "view poses"), 0.5**0.5))
+        yield Measurement(what, dict.fromkeys(("scan noise", "view shifts", "view turns"), 0.5**0.5))
     by_scans = by_more_scans(now)
     if by_scans is not None:
         yield by_scans

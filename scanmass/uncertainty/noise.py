@@ -2,16 +2,19 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Literal
 
 import numpy as np
 import numpy.typing as npt
 from scipy.spatial.distance import cdist
-from scipy.stats import t as student
+from scipy.stats import f as fisher
 
 from scanmass.errors import Note
-from scanmass.uncertainty.field import Field, correlation, fit_field
+from scanmass.uncertainty.field import Field, correlation, fit_field, scatter
+from scanmass.uncertainty.following import shares_of
+from scanmass.uncertainty.intervals import welch_satterthwaite
 from scanmass.uncertainty.patches import Patches
 from scanmass.uncertainty.rigid import RigidFit, fit_rigid, shrunk
 from scanmass.uncertainty.sources import factor
@@ -59,7 +62,7 @@ def enough_views(patches: Patches) -> bool:
     return int((seen_by_pairs.sum(axis=0) >= 12).sum()) >= LEAST_VIEWS and shared_fraction(patches) >= _LEAST_SHARED
 
 
-def from_views(patches: Patches, level: float = 0.95) -> NoiseModel:
+def from_views(patches: Patches) -> NoiseModel:
     """Noise of the moments from what differs between views (design 5.4 to 5.7).
 
     An error common to all views cannot be seen: this is the random part, between views.
@@ -78,11 +81,10 @@ def from_views(patches: Patches, level: float = 0.95) -> NoiseModel:
         rigid = shrunk(patches, fixed, *_of_one_view(patches, field))
         field = fit_field(patches, rigid.left)
     share, v = patches.shares(), patches.views
-    poses = _pose_covariance(patches, rigid, share)
-    noise = field_covariance(patches, field, share)
-    degrees = (float(v - 1), min(_MOST_DEGREES, field.degrees_of_freedom))
-    jack, jack_degrees = jackknife(patches, share), float(v - 1)
-    stretch = _stretch(jack, jack_degrees, (poses, noise), degrees, level)
+    covariances = (field_covariance(patches, field, share), *_pose_covariances(patches, rigid, share))
+    degrees = (min(_MOST_DEGREES, field.degrees_of_freedom), rigid.shift_degrees, rigid.turn_degrees)
+    stretch = _stretch(between_views(patches, share), v - 1.0, covariances, degrees)
+    names = ("scan noise", "view shifts", "view turns")
     return NoiseModel(
         "views",
         std=field.std,
@@ -91,9 +93,9 @@ def from_views(patches: Patches, level: float = 0.95) -> NoiseModel:
         shift_std=rigid.shift_std,
         rotation_std=rigid.turn_std,
         views=v,
-        parts=(
-            ("scan noise", factor(noise) * stretch, degrees[1]),
-            ("view poses", factor(poses) * stretch, degrees[0]),
+        parts=tuple(
+            (name, factor(covariance) * stretch, nu)
+            for name, covariance, nu in zip(names, covariances, degrees, strict=True)
         ),
         assumptions=(
             Note(
@@ -102,7 +104,7 @@ def from_views(patches: Patches, level: float = 0.95) -> NoiseModel:
                 "offset of the surface, a common pose error) does not show in it and counts only where declared.",
             ),
         ),
-        warnings=_incidence_warning(patches, rigid, share, noise),
+        warnings=_incidence_warning(patches, rigid, share, covariances[0]),
     )
 
 
@@ -120,65 +122,54 @@ def field_covariance(patches: Patches, field: Field, share: FloatArray) -> Float
 def _of_one_view(patches: Patches, field: Field) -> tuple[FloatArray, FloatArray]:
     """Covariance (J, J) of patch means of one view by its field, and variances (J, V) of what is a patch's own."""
     rho = correlation(cdist(patches.centres, patches.centres), field.length, field.shape)
-    return field.std**2 * rho, _own(patches, field)
+    return field.std**2 * rho, scatter(patches) + field.own**2
 
 
-def _own(patches: Patches, field: Field) -> FloatArray:
-    """(J, V): scatter within a patch over its points, and what was found beyond it."""
-    typical = np.nanmedian(patches.within) if np.isfinite(patches.within).any() else 0.0
-    within = np.where(np.isfinite(patches.within), patches.within, typical)
-    result: FloatArray = within / np.maximum(patches.counts, 1.0) + field.own**2
-    return result
+def _pose_covariances(patches: Patches, rigid: RigidFit, share: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Covariances (10, 10) of the moments from independent shifts, and from independent turns, of every view."""
+
+    def summed(std: float | None, arm: FloatArray) -> FloatArray:
+        moved = [patches.moments.T @ (share[:, v, None] * arm) for v in range(patches.views)]
+        result: FloatArray = float(std or 0.0) ** 2 * np.sum([m @ m.T for m in moved], axis=0)
+        return result
+
+    turning = np.cross(patches.centres, patches.normals)
+    return summed(rigid.shift_std, patches.normals), summed(rigid.turn_std, turning)
 
 
-def _pose_covariance(patches: Patches, rigid: RigidFit, share: FloatArray) -> FloatArray:
-    """Covariance (10, 10) of the moments from independent motions of every view."""
-    arms = (patches.normals, np.cross(patches.centres, patches.normals))
-    covariance = np.zeros((10, 10))
-    for std, arm in zip((rigid.shift_std, rigid.turn_std), arms, strict=True):
-        for v in range(patches.views):
-            moved = patches.moments.T @ (share[:, v, None] * arm)
-            covariance += float(std or 0.0) ** 2 * (moved @ moved.T)
-    return covariance
+def between_views(patches: Patches, share: FloatArray) -> FloatArray:
+    """Covariance (10, 10) of the moments by what each view adds, whatever the kind of its error.
 
-
-def jackknife(patches: Patches, share: FloatArray) -> FloatArray:
-    """Covariance (10, 10) of the moments by leaving one view out, linearised by patch means (Tukey 1958).
-
-    Where a view alone saw a patch, leaving it out changes nothing there, so this is a floor and not the whole.
+    q_v = sum_j G_j a_jv u_jv / sqrt(1 - a_jv), u the residual against the shares' mean; the covariance is
+    sum_v q_v q_v^T: the jackknife by views with its leverages (MacKinnon & White 1985). With equal shares it is
+    V/(V - 1) sum q_v q_v^T, the variance of a mean of V views. Where a view alone saw a patch it says nothing, so this
+    is a floor and not the whole.
     """
-    r = np.where(patches.seen, np.nan_to_num(patches.residuals), 0.0)
-    share = np.where(patches.seen, share, 0.0)
-    mean = (share * r).sum(axis=1)
-    views = patches.views
-    moved = []
-    for v in range(views):
-        rest = 1.0 - share[:, v]
-        able = rest > 1e-9
-        without = np.divide(mean - share[:, v] * r[:, v], rest, out=mean.copy(), where=able)
-        moved.append(patches.moments.T @ (without - mean))
-    about = np.array(moved) - np.mean(moved, axis=0)
-    result: FloatArray = (views - 1.0) / views * about.T @ about
+    seen = patches.seen & np.isfinite(patches.residuals)
+    own = shares_of(np.where(seen, share, 0.0))
+    r = np.where(seen, np.nan_to_num(patches.residuals), 0.0)
+    about = np.where(seen, r - (own * r).sum(axis=1)[:, None], 0.0)
+    able = own < 1.0 - 1e-9
+    each = np.where(able, own * about / np.sqrt(np.where(able, 1.0 - own, 1.0)), 0.0)
+    q = patches.moments.T @ each
+    result: FloatArray = q @ q.T
     return result
 
 
 def _stretch(
-    jack: FloatArray,
-    jack_degrees: float,
-    covariances: tuple[FloatArray, FloatArray],
-    degrees: tuple[float, float],
-    level: float,
+    floor: FloatArray, floor_degrees: float, covariances: Sequence[FloatArray], degrees: Sequence[float | None]
 ) -> FloatArray:
-    """(10,) factors, 1 or more, that bring each moment's half-width up to the jackknife's."""
-    variances = [np.diag(c) for c in covariances]
-    total = variances[0] + variances[1]
-    spread = variances[0] ** 2 / degrees[0] + variances[1] ** 2 / degrees[1]
-    nu = np.divide(total**2, spread, out=np.full(10, degrees[0]), where=spread > 0)
-    tail = 0.5 * (1.0 + level)
-    own = student.ppf(tail, nu) * np.sqrt(total)
-    floor = student.ppf(tail, jack_degrees) * np.sqrt(np.diag(jack))
-    ratio = np.divide(floor, own, out=np.ones(10), where=own > 0)
-    result: FloatArray = np.maximum(ratio, 1.0)
+    """(10,) factors, 1 or more, that bring each moment's variance up to where the floor no longer contradicts it.
+
+    The floor has few degrees of freedom: by chance alone it exceeds the model's variance F-fold, F the 95 % point of
+    their ratio, one time in twenty. What exceeds that is taken as true (an error of a kind the model does not know).
+    """
+    variances = np.array([np.diag(c) for c in covariances])
+    nu = welch_satterthwaite(variances, np.array(degrees, np.float64))
+    total = variances.sum(axis=0)
+    by_chance = fisher.ppf(0.95, floor_degrees, np.minimum(nu, 1e6))
+    ratio = np.divide(np.diag(floor), by_chance * total, out=np.ones(10), where=total > 0)
+    result: FloatArray = np.sqrt(np.maximum(ratio, 1.0))
     return result
 
 

@@ -12,6 +12,7 @@ from scanmass.cloud.cloud import Cloud
 from scanmass.geometry.polyhedron import face_areas, face_moments
 from scanmass.surface.surface import Surface
 from scanmass.uncertainty.distances import farthest_seeds, signed_distances, split_long
+from scanmass.uncertainty.following import shares_of, unfollowed, weights_of_views
 
 FloatArray = npt.NDArray[np.float64]
 IndexArray = npt.NDArray[np.int64]
@@ -30,7 +31,8 @@ class Patches:
     ``moments`` (J, 10): change of the ten volume moments about ``centre`` when a patch moves outward by one metre;
     ``centres``, ``normals`` (J, 3): area-weighted, centres relative to ``centre``; ``areas`` (J,);
     ``size``: longest side of the body's box; ``inferred`` (J,): share of each patch where no scan point lies;
-    ``residuals`` (J, V): mean signed distance of a view's samples outward from the surface, NaN where unseen;
+    ``residuals`` (J, V): mean signed distance of a view's samples outward from the surface, NaN where unseen or where
+    the surface follows that view alone;
     ``counts`` (J, V): scan points behind it; ``samples`` (J, V): samples behind it;
     ``within`` (J, V): variance of one scan point about that mean, NaN below three samples;
     ``towards`` (J, V): cosine between the patch's normal and the direction to the view's scanner, NaN if unknown;
@@ -94,8 +96,7 @@ class Patches:
         if not some.all():
             _, nearest = cKDTree(self.centres[some]).query(self.centres[~some])
             counts[~some] = counts[some][nearest]
-        result: FloatArray = counts / counts.sum(axis=1, keepdims=True)
-        return result
+        return shares_of(counts)
 
 
 def make(
@@ -104,7 +105,6 @@ def make(
     *,
     centre: FloatArray,
     count: int = 1000,
-    base: tuple[FloatArray, IndexArray] | None = None,
 ) -> Patches:
     """Part ``surface`` into about ``count`` patches and gather the residuals of ``cloud`` on them.
 
@@ -112,11 +112,11 @@ def make(
     ----------
     cloud : None where there are no samples; every patch is then unseen
     centre : (3,), the point moments are taken about, metres in the scan's frame
-    base : vertices and faces that residuals are taken to, where they are not taken to ``surface`` itself
-        (a coarser surface follows the noise of single views less)
 
     Notes
     -----
+    A surface made from the cloud follows each view's noise where that view's samples are; residuals are freed of that
+    (:mod:`.following`), and are NaN where nothing is left of them.
     Seeds are spread by farthest point in (position, 0.15 x size x normal), so the two sides of a thin wall part.
     """
     vertices = surface.vertices - centre
@@ -147,16 +147,11 @@ def make(
     )
     if cloud is None or len(cloud.points) == 0:
         return result
-    if base is None:
-        residual, face = signed_distances(cloud.points - centre, points, faces)
-        home = patch[face]
-    else:
-        coarse = base[0] - centre
-        residual, face = signed_distances(cloud.points - centre, coarse, base[1])
-        _, facing = face_areas(coarse, base[1])
-        at = np.hstack([cloud.points - centre, _NORMAL_WEIGHT * size * facing[face]])
-        home = np.asarray(cKDTree(features[seeds]).query(at)[1], np.int64)
-    return _with_residuals(result, cloud, residual, home)
+    residual, face = signed_distances(cloud.points - centre, points, faces)
+    followed = None
+    if surface.source == "points" and len(cloud.view_names) > 1:
+        followed = weights_of_views(vertices, surface.faces, cloud, cloud.points - centre, owner[face])
+    return _with_residuals(result, cloud, residual, patch[face], followed)
 
 
 def _seeds(features: FloatArray, area: FloatArray, count: int) -> IndexArray:
@@ -169,7 +164,9 @@ def _seeds(features: FloatArray, area: FloatArray, count: int) -> IndexArray:
     return result
 
 
-def _with_residuals(patches: Patches, cloud: Cloud, residual: FloatArray, home: IndexArray) -> Patches:
+def _with_residuals(
+    patches: Patches, cloud: Cloud, residual: FloatArray, home: IndexArray, followed: FloatArray | None
+) -> Patches:
     middle = np.median(residual)
     spread = np.median(np.abs(residual - middle))
     kept = np.abs(residual - middle) <= _CLIP * spread if spread > 0 else np.ones(len(residual), bool)
@@ -183,11 +180,17 @@ def _with_residuals(patches: Patches, cloud: Cloud, residual: FloatArray, home: 
     within = np.full(j * v, np.nan)
     about = _sums(cell, n * (r - mean[cell]) ** 2, j * v)
     np.divide(about, samples - 1, out=within, where=samples >= _LEAST_SAMPLES)
+    found = mean.reshape(j, v)
+    if followed is not None:
+        weights = _sums(cell, n[:, None] * followed[kept], j * v).reshape(j, v, v)
+        each = np.maximum(counts, 1.0).reshape(j, v, 1)
+        enough = samples.reshape(j, v) >= _LEAST_SAMPLES
+        found = unfollowed(np.where(enough, found, np.nan), counts.reshape(j, v), weights / each)
     direction = cloud.scanners[None] - patches.centre - patches.centres[:, None]
     towards = np.einsum("jvk,jk->jv", direction, patches.normals) / np.linalg.norm(direction, axis=2)
     return replace(
         patches,
-        residuals=mean.reshape(j, v),
+        residuals=found,
         counts=counts.reshape(j, v),
         samples=samples.reshape(j, v),
         within=within.reshape(j, v),

@@ -25,6 +25,7 @@ class RigidFit:
 
     ``shift_std``, ``turn_std``: standard deviation per axis of a view's motion, None from least squares alone;
     ``incidence``: metres per unit cosine of incidence, common to all views, 0 where scanner places are unknown;
+    ``shift_degrees``, ``turn_degrees``: degrees of freedom of those standard deviations;
     ``used`` (J, V): what took part; ``left`` (J, V): residuals without each view's motion, NaN where unseen.
     """
 
@@ -35,6 +36,8 @@ class RigidFit:
     left: FloatArray
     shift_std: float | None = None
     turn_std: float | None = None
+    shift_degrees: float | None = None
+    turn_degrees: float | None = None
 
     def field(self, patches: Patches) -> FloatArray:
         """(J, V): how far each view's motion moves each patch outward."""
@@ -114,11 +117,31 @@ def shrunk(patches: Patches, fit: RigidFit, together: FloatArray, alone: FloatAr
     for _ in range(10):
         weight = 1.0 / np.maximum(feigned + parts @ variances, 1e-300)
         variances, _ = nnls(parts * weight[:, None], (found**2 - feigned) * weight)
+    degrees = _degrees(variances, parts, feigned + parts @ variances, v)
     signal = parts @ variances
     share = np.divide(signal, signal + feigned, out=np.zeros_like(signal), where=signal > 0)
     result = _fit(patches, vectors @ (share * found), fit.incidence, fit.used)
     shift, turn = np.sqrt(variances)
-    return replace(result, shift_std=float(shift), turn_std=float(turn) / patches.size)
+    return replace(
+        result,
+        shift_std=float(shift),
+        turn_std=float(turn) / patches.size,
+        shift_degrees=degrees[0],
+        turn_degrees=degrees[1],
+    )
+
+
+def _degrees(variances: FloatArray, parts: FloatArray, expected: FloatArray, views: int) -> tuple[float, float]:
+    """Degrees of freedom 2 s^4 / var(s^2) of both variances (2,), between one and three for each view but one.
+
+    A squared normal deviate of expectation E has the variance 2 E^2, so the information of all on the variances is
+    sum parts parts^T / (2 E^2). Three directions are taken as alike; the least allows that all motion was in one.
+    """
+    weighed = parts / np.maximum(expected, 1e-300)[:, None]
+    doubt = np.diag(np.linalg.pinv(0.5 * weighed.T @ weighed))
+    nu = np.divide(2.0 * variances**2, doubt, out=np.zeros(2), where=doubt > 0)
+    shift, turn = np.clip(nu, views - 1.0, 3.0 * (views - 1.0))
+    return float(shift), float(turn)
 
 
 def _solve(patches: Patches, used: npt.NDArray[np.bool_], with_incidence: bool) -> tuple[FloatArray, FloatArray]:

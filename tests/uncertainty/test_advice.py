@@ -54,11 +54,11 @@ def test_the_underside_when_its_bracket_leads():
 
 def test_twice_as_many_views_against_noise():
     # A mass known better than a scale would tell: only the noise is left to cut, by the root of two.
-    rows = (_row("scan noise", 0.06, 3e-4), _row("view poses", 0.08, 4e-4))
+    rows = (_row("scan noise", 0.06, 3e-4), _row("view shifts", 0.08, 4e-4))
     found = next_measurement(_now(*rows))
     assert found.text.startswith("Scan it from twice as many views (12): ")
     assert (found.mass_factor, found.com_factor) == pytest.approx((sqrt(0.5), sqrt(0.5)))
-    assert found.source == "view poses"
+    assert found.source == "view shifts"
 
 
 def test_a_known_length_against_scale():
@@ -141,7 +141,7 @@ def test_nothing_to_go_by():
 
 
 def test_a_density_without_doubt_stated_leaves_the_mass_unbounded():
-    row = BudgetRow("view poses", "random", None, np.array([0.0, 0.0, 1e-3]))
+    row = BudgetRow("view shifts", "random", None, np.array([0.0, 0.0, 1e-3]))
     found = next_measurement(_now(row, mass_reach=None))
     assert found.text.startswith("Give the density with its doubt (as value ± doubt), or weigh the object: without one")
     assert "then scan it from twice as many views (12)" in found.text

@@ -197,7 +197,7 @@ def test_views_bound_a_scanned_ball(surface_of, cloud_of, on_sphere):
     assert found.noise.shift_std == pytest.approx(0.0003, rel=0.55)
     # A ball's turns are never seen.
     assert found.noise.rotation_std == 0
-    assert [r.source for r in found.budget][:2] == ["scan noise", "view poses"]
+    assert [r.source for r in found.budget][:2] == ["scan noise", "view shifts"]
     # Patches of some samples are denser than the mesh here; a ball has no edges to speak of.
     assert all(r.share_mass < 0.01 for r in found.budget[2:])
     assert found.com.degrees_of_freedom.min() >= 5

@@ -5,7 +5,7 @@ import trimesh
 from scipy.spatial.distance import cdist
 
 from scanmass.geometry.polyhedron import face_areas, face_moments, polyhedron_moments
-from scanmass.uncertainty import patches
+from scanmass.uncertainty import following, patches
 from scanmass.uncertainty.distances import farthest_seeds, signed_distances, split_long
 
 
@@ -86,7 +86,7 @@ def test_residuals_of_each_view_are_found(surface_of, cloud_of, on_sphere):
     shift = np.array([3.0, -2.0, 1.0])
     moved = trimesh.Trimesh(np.array(mesh.vertices) + shift, mesh.faces)
     scanners = np.array([[5.0, 0, 0], [0, 5, 0], [np.nan, np.nan, np.nan]]) + shift
-    found = patches.make(surface_of(moved), cloud_of(points + shift, view, scanners), centre=shift)
+    found = patches.make(surface_of(moved, source="mesh"), cloud_of(points + shift, view, scanners), centre=shift)
     assert found.seen.all()
     mean = np.average(np.nan_to_num(found.residuals), weights=found.counts, axis=0)
     assert mean == pytest.approx(offset + 9e-5, abs=2e-5)
@@ -149,3 +149,45 @@ def test_a_box_of_twelve_triangles_is_parted(surface_of):
     found = patches.make(surface_of(mesh), None, centre=np.zeros(3), count=500)
     assert len(found.areas) > 400
     assert found.areas.max() < 5 * found.areas.mean()
+
+
+def test_what_the_surface_follows_is_given_back():
+    """Three views' errors e seen against a surface that holds A e of them, unlike at each view's samples."""
+    rng = np.random.default_rng(8)
+    j, v = 50, 3
+    counts = rng.integers(5, 60, (j, v)).astype(float)
+    share = counts / counts.sum(axis=1, keepdims=True)
+    # A mixture of the shares and of what lies nearest: rows sum to one, and each view leads at its own samples.
+    lead = rng.uniform(0.0, 0.5, (j, 1, 1))
+    weights = (1 - lead) * share[:, None, :] + lead * np.eye(v)
+    errors = rng.normal(size=(j, v))
+    seen = errors - np.einsum("jab,jb->ja", weights, errors)
+    want = errors - (share * errors).sum(axis=1, keepdims=True)
+    assert following.unfollowed(seen, counts, weights) == pytest.approx(want, abs=1e-12)
+    assert np.abs(seen).mean() < 0.9 * np.abs(want).mean()
+
+
+def test_a_view_that_is_all_there_is_says_nothing():
+    residuals, counts = np.array([[0.0, np.nan], [1e-4, -1e-4]]), np.array([[9.0, 0.0], [9.0, 9.0]])
+    weights = np.array([[[1.0, 0.0], [0.0, 0.0]], [[0.99, 0.01], [0.01, 0.99]]])
+    found = following.unfollowed(residuals, counts, weights)
+    assert found[0, 0] == 0.0
+    assert np.isnan(found[1]).all()
+    assert not np.isnan(following.unfollowed(residuals, counts, 0.5 * (weights + 0.5))[1]).any()
+
+
+def test_weights_of_views_are_those_of_the_fit(surface_of, cloud_of, on_sphere):
+    """Where views are mixed evenly each weighs as its points; across a border each side is its own view's."""
+    rng = np.random.default_rng(9)
+    mesh = trimesh.creation.icosphere(4, 0.5)
+    points = 0.5 * on_sphere(rng, 60_000)
+    for view, near in (((np.arange(60_000) % 4 == 0).astype(int), 0.25), ((points[:, 2] > 0).astype(int), 1.0)):
+        cloud = cloud_of(points, view)
+        _, face = signed_distances(points, np.array(mesh.vertices), np.array(mesh.faces, np.int64))
+        weights = following.weights_of_views(
+            np.array(mesh.vertices), np.array(mesh.faces, np.int64), cloud, points, face
+        )
+        assert weights.sum(axis=1) == pytest.approx(np.ones(60_000), abs=1e-9)
+        inner = (view == 1) & (np.abs(points[:, 2]) > 0.2)
+        # Twenty-four samples a vertex; three rounds on seven vertices raise the view's own by about a thirtieth.
+        assert weights[inner, 1].mean() == pytest.approx(near, abs=0.05)
