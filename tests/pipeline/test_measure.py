@@ -299,7 +299,7 @@ def few(folder: Path) -> Path:
         (
             one_sided,
             Declined,
-            r"the scan is one-sided: 4\d% of all directions look at surface that was not seen; scan the other sides "
+            r"the scan is one-sided: 4\d % of all directions look at surface that was not seen; scan the other sides "
             r"too, or declare scan\.up and surface\.underside \(flat or hollow\)",
         ),
         (
