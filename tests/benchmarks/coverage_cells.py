@@ -96,14 +96,14 @@ SHARP = 15_000
 
 CELLS: tuple[Cell, ...] = (
     Cell("white-pebble-4", "noise", "white", "pebble", 4, _WHITE),
-    Cell("white-wedge-8", "noise", "white", "wedge", 8, _WHITE, points=SHARP, support="auto"),
+    Cell("white-wedge-8", "noise", "white", "wedge", 8, _WHITE, stations=2, points=SHARP, support="auto"),
     Cell("white-bowl-6", "noise", "white", "bowl", 6, _WHITE, stations=8, points=SHARP),
     Cell("short-bracket-8", "noise", "field 0.03", "bracket", 8, _SHORT),
     Cell("short-bored-5", "noise", "field 0.03", "bored", 5, _SHORT, stations=6, points=SHARP),
     Cell("middle-pebble-6", "noise", "field 0.07", "pebble", 6, _MIDDLE),
     Cell("middle-spindle-6", "noise", "field 0.07", "spindle", 6, _MIDDLE, stations=2),
     Cell("middle-bored-4", "noise", "field 0.07", "bored", 4, _MIDDLE, stations=6, points=SHARP),
-    Cell("middle-wedge-8", "noise", "field 0.07", "wedge", 8, _MIDDLE, points=SHARP),
+    Cell("middle-wedge-8", "noise", "field 0.07", "wedge", 8, _MIDDLE, stations=2, points=SHARP),
     Cell("long-gourd-10", "noise", "field 0.15", "gourd", 10, _UNEVEN),
     Cell("long-bowl-3", "noise", "field 0.15", "bowl", 3, _LONG, stations=8, points=SHARP),
     Cell("long-pebble-5", "noise", "field 0.15", "pebble", 5, _LONG),

@@ -64,11 +64,14 @@ class Planted:
 @dataclass(frozen=True)
 class Simulated:
     """Views of one scan in metres, in the first one's frame, and the true ``body`` there; ``size``: its longest side
-    before it was turned."""
+    before it was turned; ``facing``: root mean square of the cosine of incidence, which the surface feels of an error
+    along the ray.
+    """
 
     views: tuple[View, ...]
     body: Body
     size: float
+    facing: float
 
 
 def simulate(
@@ -106,7 +109,18 @@ def simulate(
     declared = seeds.stream(seed, "coverage scale")
     scale = planted.scale * float(declared.standard_normal()) + planted.scale_limit * declared.uniform(-1.0, 1.0)
     merged = [_with_errors(one, scene, planted, size, scale, place, seed, v) for v, one in enumerate(taken)]
-    return Simulated(tuple(merged), placed, size)
+    return Simulated(tuple(merged), placed, size, _facing(scene, taken))
+
+
+def _facing(scene: Scene, taken: list[list[View]]) -> float:
+    """Root mean square of the cosine of incidence over about a hundred points of each look."""
+    cosines = []
+    for look_at in (one for looks in taken for one in looks):
+        points = look_at.points[:: max(1, len(look_at.points) // 100)]
+        rays = points - np.array(look_at.pose.position)
+        across = np.einsum("ij,ij->i", rays, scene.nearest(points)[1])
+        cosines.append(across / np.linalg.norm(rays, axis=1))
+    return float(np.sqrt(np.mean(np.concatenate(cosines) ** 2)))
 
 
 def _one_look(

@@ -46,6 +46,7 @@ def run(cell: Cell, number: int, points: int | None = None) -> Line:
         floor=cell.floor,
     )
     line: Line = {"cell": cell.name, "scan": number, "seed": seed, "truth": truth(scan.body.moments())}
+    line["facing"] = round(scan.facing, 4)
     ready = time.perf_counter()
     try:
         with tempfile.TemporaryDirectory(dir=_memory()) as folder:

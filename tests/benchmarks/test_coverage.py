@@ -15,11 +15,14 @@ from scanmass.geometry.tensors import central_inertia, principal
 from scanmass.studies.ray_casting import Scene
 from tests.benchmarks import coverage
 from tests.benchmarks.coverage_bodies import BODIES, body, near_symmetric
-from tests.benchmarks.coverage_cells import CELLS, FIRST, named
+from tests.benchmarks.coverage_cells import CELLS, FIRST, Cell, named
 from tests.benchmarks.coverage_generators import Planted, merged_into_one, simulate
-from tests.benchmarks.coverage_scan import seed_of, truth
+from tests.benchmarks.coverage_scan import Line, run, seed_of, truth
+from tests.benchmarks.coverage_tables import tables
 from tests.benchmarks.coverage_tally import (
+    AT_68,
     AT_95,
+    FAMILY,
     UNDETERMINED,
     Count,
     Range,
@@ -29,6 +32,7 @@ from tests.benchmarks.coverage_tally import (
     held_68,
     holm,
 )
+from tests.benchmarks.coverage_verdict import shortfalls, widths
 
 
 def test_binomial_tests_against_products_and_sums_by_hand() -> None:
@@ -110,6 +114,52 @@ def test_axes_hold_by_their_cone_or_by_being_undetermined() -> None:
     assert found[UNDETERMINED] == [True, True]
     assert "moment 1" not in found
     assert count([line, line])[UNDETERMINED] == Count(4, 4)
+
+
+def _scans(name: str, errors: list[float], **changes: object) -> tuple[Cell, list[Line]]:
+    """Scans of a cell whose volumes and centres are off by ``errors``, in stated standard deviations."""
+    lines = []
+    for error in errors:
+        line: Line = {**_line(), "cell": name, "budget": [], "noise": {}, "points": [1], "observed": 1.0} | changes
+        shifted = {key: 10.0 + error + off for key, off in (("value", 0.0), ("low", -2.1), ("high", 2.1))}
+        line["volume"] = {**line["volume"], **shifted}
+        lines.append(line)
+    return next(c for c in CELLS if c.name == name), lines
+
+
+def test_widths_against_errors_known_by_hand() -> None:
+    # Errors -1, 0, 1, 2: mean 0.5, variance (2.25 + 0.25 + 0.25 + 2.25) / 3 = 5/3, of a volume of 10; half-width 2.1.
+    found = widths(*_scans("white-pebble-4", [-1.0, 0.0, 1.0, 2.0]))
+    assert found is not None
+    assert (found.bias, found.spread) == pytest.approx((0.05, np.sqrt(5 / 3) / 10))
+    assert found.ratios[0] == pytest.approx(2.1 / (1.96 * np.sqrt(5 / 3)))
+    # 1.1 t(5) / 1.96 with t = 2.571 of any table.
+    assert found.target == pytest.approx(1.1 * 2.571 / 1.96, rel=1e-3)
+    eight = widths(*_scans("short-bracket-8", [0.0, 1.0, 2.0]))
+    assert eight is not None
+    assert eight.target == 1.3
+    assert widths(*_scans("white-pebble-4", [0.0, 1.0])) is None
+
+
+def test_what_falls_short_is_named() -> None:
+    spread = list(np.linspace(-1.9, 1.9, 40))
+    good = [line for line in shortfalls([_scans("white-pebble-4", spread)]) if line[1].endswith(("volume", "bias"))]
+    assert good == []
+    # 12 of 40 outside: far beyond chance at 93 %.
+    bad = shortfalls([_scans("white-pebble-4", [*spread[:28], *[3.0] * 12])])
+    assert ["white-pebble-4", "95 % of volume"] in [row[:2] for row in bad]
+    # Forty even steps from 0.4 to 0.6: spread 0.2/39 sqrt((40^2 - 1)/12 40/39) = 0.0600, over sqrt 40: 0.0095 of 10.
+    leaning = shortfalls([_scans("white-pebble-4", list(np.linspace(0.4, 0.6, 40)))])
+    assert ["white-pebble-4", "bias", "+5.000 ± 0.095 %", "within 0.1 %"] in leaning
+    # A bracket misses once, and the pose bracket is absent where it must appear, present where it should not.
+    assert ["unseen-drum", "bounds with bracket of volume", "4/5", "all"] in shortfalls(
+        [_scans("unseen-drum", [0.0, 0.1, 0.2, 0.3, 3.0])]
+    )
+    shown = {"budget": [["pose or incidence error common to all views", "bracket", None, 1.0]]}
+    assert ["axial-pebble-6", "pose bracket", "0/5", "all"] in shortfalls([_scans("axial-pebble-6", [0.0] * 5)])
+    assert shortfalls([_scans("axial-pebble-6", [0.0] * 5, **shown)]) == []
+    often = shortfalls([_scans("white-pebble-4", spread, **shown)])
+    assert ["white-pebble-4", "pose bracket", "40/40", "at most 5 %"] in often
 
 
 def test_declined_scans_and_absent_bounds_count_nowhere() -> None:
@@ -203,3 +253,49 @@ def test_cells_are_a_design_of_the_size_asked() -> None:
     assert len(named("first")) == len(FIRST.split(","))
     with pytest.raises(ValueError, match="no cell, group or noise model is called nonsense"):
         named("nonsense")
+
+
+SHORT = {"middle-pebble-6": 14, "pose-gourd-6": 10}
+"""Scans of the short run, with a seventh of the study's points: some 1.3 s each."""
+
+FEW = ("volume", "region", "moment 2")
+
+
+@pytest.fixture(scope="module")
+def short_run() -> list[Line]:
+    cells = [cell for cell in CELLS if cell.name in SHORT]
+    return [run(cell, number, 1500) for cell in cells for number in range(SHORT[cell.name])]
+
+
+def _outside(lines: list[Line]) -> dict[str, float]:
+    """Holm's p-values at most the family's level, by quantity and level. Six tests: each more would cost power."""
+    found = {(name, 95): count(lines)[name].p_value(AT_95) for name in FEW}
+    found |= {(name, 68): count(lines, held_68)[name].p_value(AT_68) for name in FEW}
+    return {f"{n} {level}": p for (n, level), p in zip(found, holm(list(found.values())), strict=True) if p <= FAMILY}
+
+
+def test_short_run_keeps_within_its_binomial_range(short_run: list[Line]) -> None:
+    # 24 scans fail with 17 held or fewer at 95 % (chance 4e-4 if it were 93 %) or with all within the 68 % bounds
+    # (1.4e-3 if it were 76 %), a sixth of one per cent being 1.7e-3: bounds half as wide as they should be, or twice,
+    # are found, no finer fault. The full study tells those.
+    assert _outside(short_run) == {}
+    assert count(short_run)["volume"].of == sum(SHORT.values())
+
+
+@pytest.mark.parametrize("factor", [0.3, 5.0])
+def test_short_run_fails_with_bounds_too_narrow_or_too_wide(short_run: list[Line], factor: float) -> None:
+    changed = copy.deepcopy(short_run)
+    for line in changed:
+        figure = line["volume"]
+        figure["std"] *= factor
+        for end in ("low", "high"):
+            figure[end] = figure["value"] + factor * (figure[end] - figure["value"])
+    assert any(name.startswith("volume") for name in _outside(changed))
+
+
+def test_tables_print_every_cell(short_run: list[Line]) -> None:
+    text = tables(short_run)
+    for name in SHORT:
+        assert text.count(name) >= 5
+    assert "Pooled per noise model" in text
+    assert tables([]) == "no scan in the ledger yet"
