@@ -37,7 +37,8 @@ class Surface:
     ``source``: "points" (reconstructed) or "mesh" (the scan's own faces);
     ``resolution``: edge length of the reconstruction, or the median edge of a mesh, in metres;
     ``closures``: shapes that bracket what was not seen, empty where everything was;
-    ``coarse_moments`` (10,): of the surface before refinement, the reconstruction's own doubt, or None.
+    ``settling_moments`` (10,): of the surface after its first round of refinement, or None; how far it still settled
+    since is the reconstruction's own doubt.
     """
 
     vertices: FloatArray
@@ -48,7 +49,7 @@ class Surface:
     underside: Underside
     shells: int
     closures: tuple[Closure, ...] = ()
-    coarse_moments: FloatArray | None = None
+    settling_moments: FloatArray | None = None
     assumptions: tuple[Note, ...] = field(default=())
     warnings: tuple[Note, ...] = field(default=())
 
@@ -72,7 +73,7 @@ class Surface:
             self,
             vertices=self.vertices + shift,
             closures=tuple(Closure(c.name, translated(c.moments, shift)) for c in self.closures),
-            coarse_moments=None if self.coarse_moments is None else translated(self.coarse_moments, shift),
+            settling_moments=None if self.settling_moments is None else translated(self.settling_moments, shift),
         )
 
     def noted(self, *, assumptions: tuple[Note, ...] = (), warnings: tuple[Note, ...] = ()) -> Surface:

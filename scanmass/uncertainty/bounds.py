@@ -216,8 +216,8 @@ def _terms(
         rows = field_rows(patched, declared.noise_std, float(length or 0.0))
         found.append(Term("declared noise common to all views", "declared", on_outer_part(rows, parts)))
     found.extend(offset_terms(patched, declared, parts))
-    if surface.coarse_moments is not None:
-        refined = parts.moments.sum(axis=0) - translated(surface.coarse_moments, -centre)
+    if surface.settling_moments is not None:
+        refined = parts.moments.sum(axis=0) - translated(surface.settling_moments, -centre)
         found.append(Term("reconstruction", "random", on_outer_part(0.5 * refined[None], parts)))
     if surface.source == "points" and cloud is not None:
         rows = detail_rows(surface, cloud, centre)

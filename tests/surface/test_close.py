@@ -144,8 +144,8 @@ def test_all_round_needs_no_closure() -> None:
     assert surface.closures == ()
     assert surface.observed_fraction == 1.0
     assert surface.assumptions == ()
-    assert surface.coarse_moments is not None
-    assert surface.moved(np.ones(3)).coarse_moments == pytest.approx(translated(surface.coarse_moments, np.ones(3)))
+    assert surface.settling_moments is not None
+    assert surface.moved(np.ones(3)).settling_moments == pytest.approx(translated(surface.settling_moments, np.ones(3)))
 
 
 def test_one_side_is_declined() -> None:

@@ -139,7 +139,7 @@ def test_brackets_reach_over_the_closures(box):
 def test_reconstruction_counts_half_its_step(box):
     whole = polyhedron_moments(box.vertices, box.faces)
     coarse = translated(polyhedron_moments((box.vertices - PLACE) * 1.001, box.faces), PLACE)
-    found = run(replace(box, coarse_moments=coarse), declared=Declared(0.0), densities=[Figure.exact(1000.0)])
+    found = run(replace(box, settling_moments=coarse), declared=Declared(0.0), densities=[Figure.exact(1000.0)])
     assert found.volume.std == pytest.approx(0.5 * abs(coarse[0] - whole[0]))
     assert found.com.std == pytest.approx(np.zeros(3), abs=1e-12)
     assert [r.source for r in found.budget] == ["reconstruction"]
