@@ -17,9 +17,9 @@ CELL = 2.0
 MOSTLY = 0.5
 """A cell is lit where at least half of the nine round it hold a sample: single empty cells among lit ones do not count,
 and the edge of what was seen stays where it is."""
-MARGIN = 1.5
-"""Cells by which the seen floor is taken smaller: what the cells round off (half a diagonal), and samples at the foot
-of a wall that count as the floor's (they lie within some noise of it, about a cell)."""
+MARGIN = 2.0
+"""Cells by which the seen floor is taken smaller: half a diagonal that a place is off its cell's middle, as much at the
+shadow's edge, and the half cell by which a majority of nine may go beyond it."""
 ROUND = 8
 """Cells round the object's outline that are looked at."""
 MOST_CELLS = 2000

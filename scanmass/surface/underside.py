@@ -39,15 +39,15 @@ def underside_span(mesh: Mesh, region: Mask, base: Base, normals: FloatArray, no
     lid = tangent_cone(mesh, region, normals) if not base.supported and converges(mesh, region, up) else None
     if lid is not None:
         lid = np.where((lid @ up < far @ up)[:, None], lid, far)
-    notes.append(_unknown_note(mesh, region, base, lid is not None))
+    notes.append(_unknown_note(mesh, region, near, lid is not None))
     return Span(region, near, far, 0.5, True, "underside", lid=lid)
 
 
-def _unknown_note(mesh: Mesh, region: Mask, base: Base, narrows: bool) -> Note:
+def _unknown_note(mesh: Mesh, region: Mask, near: FloatArray, narrows: bool) -> Note:
     text = (
-        f"the underside ({_share(mesh, region)}) was not seen: it is taken to be solid down to some surface between "
-        "the rim of what was seen and the floor, with nothing recessed above the rim. If it may be hollow or cut out "
-        "below, mass and volume may lie below their bounds: feel under it, and declare surface.underside"
+        f"the underside ({_share(mesh, region, near)}) was not seen: it is taken to be solid down to some surface "
+        "between the rim of what was seen and the floor, with nothing recessed above the rim. If it may be hollow or "
+        "cut out below, mass and volume may lie below their bounds: feel under it, and declare surface.underside"
     )
     if narrows:
         text += (
@@ -56,9 +56,11 @@ def _unknown_note(mesh: Mesh, region: Mask, base: Base, narrows: bool) -> Note:
     return Note("nothing-recessed-above-rim", text)
 
 
-def _share(mesh: Mesh, region: Mask) -> str:
-    area, _ = face_areas(mesh.vertices, mesh.faces)
-    return f"{100 * area[region].sum() / area.sum():.2g} % of the reconstructed surface"
+def _share(mesh: Mesh, region: Mask, near: FloatArray) -> str:
+    """The gap's part of the surface, spanned by a membrane: the reconstruction's own lid may be any size."""
+    seen, _ = face_areas(mesh.vertices, mesh.faces[~region])
+    spanned, _ = face_areas(near, mesh.faces[region])
+    return f"{100 * spanned.sum() / (spanned.sum() + seen.sum()):.2g} % of the surface"
 
 
 def _declared(
@@ -72,18 +74,23 @@ def _declared(
     notes: list[Note],
 ) -> Span:
     """Flat, or raised by the declared depth, where the object can stand; bracketed where the floor below was seen."""
-    far, clear = _down(mesh, region, base, normals, near, up, level, inward=True)
+    far, hangs = _down(mesh, region, base, normals, near, up, level, inward=True)
     inside, _ = corners(mesh, region)
-    hangs = clear > 0.0
     if base.underside == "hollow":
         far[inside & ~hangs] += _depth(mesh, base, up, level, notes) * up
-    share = float(np.mean(hangs[mesh.faces[region]].all(axis=1)))
+    text = (
+        f"the underside ({_share(mesh, region, near)}) was not seen, and is closed {base.underside} as declared: on "
+        "feet or runners that hide what is between them the object weighs less"
+    )
+    notes.append(Note("underside-as-declared", text))
     if not hangs[inside].any():
         return Span(region, near, far, 1.0, False, "underside")
+    spanned, _ = face_areas(near, mesh.faces[region])
+    share = float(spanned[hangs[mesh.faces[region]].any(axis=1)].sum() / spanned.sum())
     text = (
-        f"the underside was declared {base.underside}, yet {100 * share:.2g} % of it (where: "
-        f"{whereabouts(mesh, region, up)}) hangs over floor that was seen: there it is bracketed between the rim of "
-        "what was seen and the lines of sight"
+        f"{100 * share:.2g} % of the underside that was declared {base.underside} hangs over floor that was seen "
+        f"({whereabouts(mesh, region, up)}): there it is bracketed between the rim of what was seen and the lines of "
+        "sight"
     )
     notes.append(Note("underside-partly-off-the-floor", text))
     return Span(region, np.where(hangs[:, None], near, far), far, 0.5, True, "underside")
@@ -117,17 +124,18 @@ def _down(
     level: float,
     *,
     inward: bool,
-) -> tuple[FloatArray, FloatArray]:
-    """Vertices (n, 3) with the region as low as it can be, and how far (n,) each lies over floor that was seen.
+) -> tuple[FloatArray, Mask]:
+    """Vertices (n, 3) with the region as low as it can be, and which (n,) of them hang.
 
     Where the floor was not seen, down to it. Where it was, a line of sight passes under the rim of the object and meets
     the floor: between the edge of what was seen of the floor and the rim, the body ends above the straight line
-    between them.
+    between them. A place hangs where the floor below it was seen, or below the nearest part of the rim: nothing shows
+    that the object stands there, for a line of sight may have missed what hides the floor.
     """
     plumb = floor(mesh, region, normals, up, level, inward=inward)
     clear = np.zeros(len(mesh.vertices))
     if base.ground is None:
-        return plumb, clear
+        return plumb, clear > 0.0
     inside, rim = corners(mesh, region)
     # The rim itself: where it stands over the floor that was seen, no wall goes down from it.
     clear[rim] = base.ground.clear(near[rim])
@@ -141,4 +149,6 @@ def _down(
     part = clear[inner] / np.where(whole > 0.0, whole, 1.0)
     height = level + part * np.maximum((near[rim] @ up)[index] - level, 0.0)
     result[inner] += (height - result[inner] @ up)[:, None] * up
-    return result, clear
+    hangs = clear > 0.0
+    hangs[inner] |= hangs[rim][index]
+    return result, hangs

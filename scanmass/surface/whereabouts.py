@@ -14,7 +14,7 @@ CENTRAL = 0.1
 def whereabouts(mesh: Mesh, region: Mask, up: FloatArray | None) -> str:
     """Of a gap (m,): how high up, where up is known, and towards which axes its rim lies from the object's middle."""
     _, rim = corners(mesh, region)
-    _, seen = corners(mesh, ~region)
+    seen, _ = corners(mesh, ~region)
     low, high = mesh.vertices[seen].min(axis=0), mesh.vertices[seen].max(axis=0)
     size = float((high - low).max())
     place = (mesh.vertices[rim].mean(axis=0) if rim.any() else mesh.vertices.mean(axis=0)) - 0.5 * (low + high)

@@ -128,6 +128,40 @@ def block() -> Body:
     return from_solid("block, chamfered foot", wide + chamfer - bore)
 
 
+def goblet() -> Body:
+    """A wide foot, a stem, and a cup that overhangs it; solid."""
+    side = [
+        (0.08, 0.0),
+        (0.08, 0.012),
+        *_arc((0.07, 0.022), (0.025, 0.10), -0.015),
+        *_arc((0.025, 0.16), (0.11, 0.34), 0.030),
+    ]
+    return _turned("goblet", [(0.0, 0.0), *side, (0.0, 0.34)])
+
+
+def sledge() -> Body:
+    """A block on two runners, with a rounded hump on top."""
+    m = solid_modeller()
+    solid = m.Manifold.cube((0.30, 0.18, 0.17)).translate((-0.15, -0.09, 0.03))
+    for y in (-0.09, 0.05):
+        solid = solid + m.Manifold.cube((0.30, 0.04, 0.031)).translate((-0.15, y, 0.0))
+    hump = m.Manifold.sphere(0.09, 64).translate((0.04, 0.01, 0.19))
+    return from_solid("sledge", solid + hump)
+
+
+def pear() -> Body:
+    """A leaning pear that rests on its round bottom."""
+    balls = np.array(
+        [
+            [0.00, 0.00, 0.13, 0.120],
+            [0.02, 0.01, 0.20, 0.090],
+            [0.05, 0.03, 0.28, 0.055],
+            [0.07, 0.04, 0.33, 0.035],
+        ]
+    )
+    return _level_set("pear", _blended(balls, 0.015), (-0.18, -0.18, -0.05), (0.22, 0.20, 0.42), 0.008)
+
+
 BODIES: dict[str, Callable[[], Body]] = {
     "frustum": cache(frustum),
     "boulder": cache(boulder),
@@ -136,7 +170,11 @@ BODIES: dict[str, Callable[[], Body]] = {
     "tripod": cache(tripod),
     "dome": cache(dome),
     "block": cache(block),
+    "goblet": cache(goblet),
+    "sledge": cache(sledge),
+    "pear": cache(pear),
 }
-"""Name to body."""
-FLAT = ("vase", "bust", "tripod", "dome", "block")
-"""Those that stand on a flat base."""
+"""Name to body. The last three were made after the closures were settled on the others."""
+FLAT = ("vase", "bust", "tripod", "dome", "block", "goblet")
+"""Those that stand on a flat base. The sledge does not: its runners hide the floor between them, so that declared flat
+it comes out 7 % too large, and nothing in the scan shows it."""
