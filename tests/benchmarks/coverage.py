@@ -46,9 +46,9 @@ def missing(lines: Iterable[Line], cells: Sequence[Cell], scans: int) -> list[tu
     return [(cell, k) for k in range(scans) for cell in cells if (cell.name, k) not in done]
 
 
-def fill(path: Path, work: Sequence[tuple[Cell, int]], workers: int, points: int | None = None) -> None:
-    """Run scans and add their lines to the ledger as they come."""
-    started, refused = time.perf_counter(), set[str]()
+def fill(path: Path, work: Sequence[tuple[Cell, int]], workers: int, points: int | None = None) -> dict[str, str]:
+    """Run scans and add their lines to the ledger as they come; gives the cells that are not available, and why."""
+    started, refused, done = time.perf_counter(), dict[str, str](), 0
     if path.exists() and not path.read_bytes().endswith(b"\n"):
         path.write_bytes(path.read_bytes() + b"\n")
     for name in _THREADS:
@@ -69,15 +69,15 @@ def fill(path: Path, work: Sequence[tuple[Cell, int]], workers: int, points: int
                 continue
             ready = next(as_completed(running))
             name, line = running.pop(ready), ready.result()
+            done += 1
             if "unavailable" in line:
-                if name not in refused:
-                    print(f"{name}: skipped, not available: {line['unavailable']}", file=sys.stderr, flush=True)
-                refused.add(name)
+                refused[name] = line["unavailable"]
                 continue
             out.write(json.dumps(line) + "\n")
             out.flush()
-            print(f"\r{at}/{len(work)} {time.perf_counter() - started:.0f} s", end="", file=sys.stderr, flush=True)
+            print(f"\r{done}/{len(work)} {time.perf_counter() - started:.0f} s", end="", file=sys.stderr, flush=True)
     print(file=sys.stderr)
+    return refused
 
 
 def main(arguments: Sequence[str] | None = None) -> None:
@@ -91,10 +91,14 @@ def main(arguments: Sequence[str] | None = None) -> None:
     asked = parser.parse_args(arguments)
     cells = named(asked.cells)
     work = missing(ledger(asked.out), cells, asked.scans)
-    if work:
-        fill(asked.out, work, asked.workers, asked.points)
+    refused = fill(asked.out, work, asked.workers, asked.points) if work else {}
     names = {cell.name for cell in cells}
-    print(tables([line for line in ledger(asked.out) if line["cell"] in names]))
+    lines = [line for line in ledger(asked.out) if line["cell"] in names]
+    print(tables(lines))
+    for name, why in refused.items():
+        print(f"{name}: skipped, not available: {why}")
+    for name in sorted(names - {line["cell"] for line in lines} - set(refused)):
+        print(f"{name}: no scan in the ledger")
 
 
 if __name__ == "__main__":

@@ -244,6 +244,17 @@ def test_ledger_goes_on_where_it_stopped(tmp_path: Path) -> None:
     assert seed_of(cells[0], 0) != seed_of(cells[0], 1) != seed_of(cells[1], 1)
 
 
+def test_the_study_prints_its_tables_and_what_was_not_run(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str], short_run: list[Line]
+) -> None:
+    path = tmp_path / "ledger.jsonl"
+    path.write_text("".join(json.dumps(line) + "\n" for line in short_run[:6]))
+    coverage.main(["--out", str(path), "--scans", "0", "--cells", "middle-pebble-6,own-pebble-6"])
+    said = capsys.readouterr().out
+    assert "middle-pebble-6      6         0" in said
+    assert said.endswith("own-pebble-6: no scan in the ledger\n")
+
+
 def test_cells_are_a_design_of_the_size_asked() -> None:
     assert len({c.name for c in CELLS}) == len(CELLS)
     noise = [c for c in CELLS if c.group == "noise"]
