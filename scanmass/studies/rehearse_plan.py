@@ -25,6 +25,8 @@ from scanmass.pipeline.models import Pipeline
 from scanmass.report.ply import read_removed, read_surface
 from scanmass.report.tables import read_state
 from scanmass.studies.ray_casting import Scene, Skin
+from scanmass.uncertainty.declared import ASSUMED_LENGTH, Declared
+from scanmass.uncertainty.reading import read_certificate
 
 FloatArray = npt.NDArray[np.float64]
 IndexArray = npt.NDArray[np.int64]
@@ -35,15 +37,14 @@ _NOT_PLANTED = ("grid edge",)
 _SAME_VOLUME = 1e-6
 """surface.ply is the surface whose volume result.json states, to rounding; a file from elsewhere is not."""
 _AROUND, _MAD = 16, 1.4826
-_ASSUMED_LENGTH = 0.1
-"""Share of the size over which a declared noise without a length goes together, as the pipeline assumes it."""
 
 
 @dataclass(frozen=True)
 class Noise:
     """Noise to simulate, metres and radians. ``own``: a field of each view; else one field common to all.
 
-    ``common_std``, ``common_length``: declared beside what the views tell, the same in all of them.
+    ``common_std``, ``common_length``: declared beside what the views tell, the same in all of them; ``offset_std``: of
+    a shift of the whole surface along its normal.
     """
 
     basis: str
@@ -55,6 +56,7 @@ class Noise:
     rotation_std: float
     common_std: float = 0.0
     common_length: float = 0.0
+    offset_std: float = 0.0
 
 
 @dataclass(frozen=True)
@@ -124,8 +126,10 @@ def read_plan(directory: Path) -> Plan:
     vertices = surface.vertices - origin
     _require_same(polyhedron_moments(vertices, surface.faces)[0], document, directory)
     source = str(document["surface"]["source"])
-    noise = _noise(noise_block, settings, float(np.ptp(vertices, axis=0).max()))
-    if source == "mesh" and noise.std == 0.0 and settings.scan.scale is None:
+    size = float(np.ptp(vertices, axis=0).max())
+    declared = _declared(settings, size)
+    noise = _noise(noise_block, declared, size)
+    if source == "mesh" and noise.std == noise.offset_std == 0.0 and declared.scale is None:
         raise Declined(
             "the surface was declared exact (noise_std: 0), so every simulated scan would be the same",
             file=directory / "result.json",
@@ -150,7 +154,7 @@ def read_plan(directory: Path) -> Plan:
         strays=(removed.points - origin)[kind == "outlier"],
         beside=(removed.points - origin)[~np.isin(kind, ("outlier", *_NOT_PLANTED))],
         noise=noise,
-        scale=settings.scan.scale,
+        scale=declared.scale,
         truth=_truth(vertices, surface.faces, density, origin),
         pipeline=effective_text(_settings(settings, density)),
         frames=settings.scan.frames,
@@ -189,10 +193,18 @@ def _key(directory: Path) -> str:
     return digest.hexdigest()
 
 
-def _noise(block: Mapping[str, Any], settings: Pipeline, size: float) -> Noise:
+def _declared(settings: Pipeline, size: float) -> Declared:
+    """What was declared of the scanner, by itself and by its certificate, for an object of longest side ``size``."""
+    scan = settings.scan
+    declared = Declared(scan.noise_std, scan.noise_length, scan.scale)
+    certificate = scan.certificate.certificate
+    return declared if certificate is None else read_certificate(certificate, declared, size).declared
+
+
+def _noise(block: Mapping[str, Any], declared: Declared, size: float) -> Noise:
     own = block["basis"] == "views"
-    common = settings.scan.noise_std if own and settings.scan.noise_std else 0.0
-    length = settings.scan.noise_length
+    shared = declared.noise_std if own and not declared.noise_from_certificate else None
+    length = declared.noise_length
     return Noise(
         basis=str(block["basis"]),
         own=own,
@@ -201,8 +213,9 @@ def _noise(block: Mapping[str, Any], settings: Pipeline, size: float) -> Noise:
         exponential=block["shape"] == "exponential",
         shift_std=float(block["shift_std_m"] or 0.0),
         rotation_std=float(block["rotation_std_rad"] or 0.0),
-        common_std=common,
-        common_length=_ASSUMED_LENGTH * size if length is None else length,
+        common_std=shared or 0.0,
+        common_length=ASSUMED_LENGTH * size if length is None else length,
+        offset_std=declared.offset_std,
     )
 
 

@@ -79,8 +79,8 @@ def field(std: float, length: float, exponential: bool, places: FloatArray, rng:
 
 
 def common_error(noise: Noise, places: FloatArray, rng: np.random.Generator) -> FloatArray:
-    """The error (n,) that all views have in common: declared beside theirs, or all of it where views do not tell it."""
-    total = field(noise.common_std, noise.common_length, False, places, rng)
+    """The error (n,) that all views have in common: declared beside theirs, or all of it where views tell none."""
+    total = noise.offset_std * rng.standard_normal() + field(noise.common_std, noise.common_length, False, places, rng)
     if not noise.own:
         total = total + field(noise.std, noise.length, noise.exponential, places, rng)
     return total

@@ -162,7 +162,8 @@ def verdict(rows: Sequence[Plain], level: float, failed: int, scans: int) -> str
         return f"No simulated scan came with bounds, so nothing is said of them.{tail}"
     if narrow:
         worst = max(narrow, key=lambda row: float(row["widen_by"]))
-        which = _and([str(row["figure"]) for row in narrow])
+        bracketed = any(row["random_held"] is not None for row in rows)
+        which = _and([_named(str(row["figure"]), bracketed) for row in narrow])
         return (
             f"Bounds stated as {stated} held too seldom for {which}: widen them {_times(worst['widen_by'])} "
             f"(the most any needs) before relying on them.{tail}"
@@ -173,6 +174,11 @@ def verdict(rows: Sequence[Plain], level: float, failed: int, scans: int) -> str
         f"scans or more for every figure. So many scans would not have shown it, had they held in only "
         f"{100 * least['share_low']:.0f} %.{tail}"
     )
+
+
+def _named(figure: str, bracketed: bool) -> str:
+    """The region is of the random part: where there is a bracket, misses may lie in what the unseen part could be."""
+    return f"{figure} (which leaves out what the unseen part could be)" if bracketed and "region" in figure else figure
 
 
 def _times(factor: float) -> str:

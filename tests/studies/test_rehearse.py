@@ -26,7 +26,7 @@ def of_views(tmp_path_factory: pytest.TempPathFactory) -> Path:
     """The pebble from four views that tell their own noise."""
     folder = tmp_path_factory.mktemp("views")
     files = [
-        pebble.write_ply(folder / f"{k}.ply", 1000.0 * points) for k, points in enumerate(pebble.views(2000, 1e-4))
+        pebble.write_ply(folder / f"{k}.ply", 1000.0 * points) for k, points in enumerate(pebble.views(1200, 1e-4))
     ]
     write(scanmass.measure(files, pebble.settings()), folder / "result", cells=False)
     return folder / "result"
@@ -83,37 +83,38 @@ def test_every_scan_is_measured_once_and_an_interrupted_rehearsal_goes_on(
 ) -> None:
     folder = copied(of_views)
     done: list[tuple[str, int, int]] = []
-    whole = rehearse(folder, scans=3, progress=lambda *report: done.append(report))
-    assert len(calls) == 3
-    assert done == [("rehearse", k, 3) for k in range(4)]
+    whole = rehearse(folder, scans=2, progress=lambda *report: done.append(report))
+    assert len(calls) == 2
+    assert done == [("rehearse", k, 2) for k in range(3)]
     assert json.loads((folder / "rehearsal.json").read_text("utf-8")) == whole
     refuse_foreign(folder)  # a result with its rehearsal may still be replaced by a new one
 
-    assert rehearse(folder, scans=3) == whole
-    assert len(calls) == 3
+    assert rehearse(folder, scans=2) == whole
+    assert len(calls) == 2
 
     # Cut off while the last line was written: that scan alone is made again, and comes out the same.
     ledger = folder / "rehearsal.jsonl"
     ledger.write_bytes(ledger.read_bytes()[:-200])
-    assert rehearse(folder, scans=3) == whole
-    assert len(calls) == 4
+    assert rehearse(folder, scans=2) == whole
+    assert len(calls) == 3
 
-    assert rehearse(folder, scans=4)["measured"] == 4
-    assert len(calls) == 5
+    # Two more, by two processes that the counter does not see; what is done already is not done again.
+    assert rehearse(folder, scans=4, workers=2)["measured"] == 4
+    assert len(calls) == 3
 
 
-def test_two_workers_come_to_the_same(of_views: Path, copied: Copied) -> None:
-    folder = copied(of_views)
-    rehearse(folder, scans=2)
+def test_two_workers_come_to_the_same(of_mesh: Path, copied: Copied) -> None:
+    folder = copied(of_mesh)
+    rehearse(folder, scans=3)
     alone = (folder / "rehearsal.json").read_bytes()
-    rehearse(folder, scans=2, workers=2, again=True)
+    rehearse(folder, scans=3, workers=2, again=True)
     assert (folder / "rehearsal.json").read_bytes() == alone
 
 
 def test_bounds_planted_too_narrow_are_found_and_by_how_much(of_mesh: Path, copied: Copied) -> None:
     fair = rehearse(of_mesh, scans=12)
-    assert fair["widen_by"] == 1.0
-    assert fair["verdict"].startswith("Nothing asks for wider bounds: stated as 95 %, they held in")
+    # Of the volume alone: one of eleven figures of twelve scans may well fall out (2 in 100 each, by the binomial).
+    assert _figure(fair, "volume")["widen_by"] == 1.0
     # The scanner is ten times as noisy as the pipeline file declares: the same draws, ten times as large.
     folder = _changed(copied(of_mesh), lambda document: document["noise"].update(std_m=0.001))
     narrow = rehearse(folder, scans=12, again=True)

@@ -123,6 +123,13 @@ def test_an_error_that_is_not_the_views_own_is_common_to_all(tmp_path: Path) -> 
     np.testing.assert_allclose(errors[1][near], errors[0][other[near]], atol=3e-4)
 
 
+def test_an_offset_moves_the_whole_surface(tmp_path: Path) -> None:
+    fair, moved = _scanned(_plan(), tmp_path), _scanned(_plan(replace(SILENT, offset_std=0.001)), tmp_path)
+    steps = np.concatenate([np.linalg.norm(b - a, axis=1) for a, b in zip(fair, moved, strict=True)])
+    assert np.ptp(steps) < 1e-11
+    assert 1e-5 < steps[0] < 4e-3
+
+
 def test_views_are_moved_as_bodies(tmp_path: Path) -> None:
     noise = replace(SILENT, shift_std=0.001, rotation_std=0.01)
     for a, b in zip(_scanned(_plan(), tmp_path), _scanned(_plan(noise), tmp_path), strict=True):

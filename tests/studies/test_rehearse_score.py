@@ -107,3 +107,10 @@ def test_scans_without_bounds_do_not_count() -> None:
         row |= {"cone_deg": None, "determined": False}
     rows = summarise([score(document, TRUTH)], 0.95)
     assert [(row["of"], row["widen_by"]) for row in rows[:8]] == [(0, None)] * 8
+
+
+def test_a_region_beside_a_bracket_is_named_for_what_it_is() -> None:
+    document = _document(off=0.3, half=0.1)
+    document["volume_m3"] |= {"low": 1.5, "high": 2.6}
+    rows = summarise([score(document, TRUTH)] * 8, 0.95)
+    assert "centre region (which leaves out what the unseen part could be)" in verdict(rows, 0.95, 0, 8)
