@@ -267,7 +267,7 @@ def test_cells_are_a_design_of_the_size_asked() -> None:
 
 
 SHORT = {"middle-pebble-6": 14, "pose-gourd-6": 10}
-"""Scans of the short run, with a seventh of the study's points: some 1.3 s each."""
+"""Scans of the short run, with 1500 points a view: some 1.3 s each."""
 
 FEW = ("volume", "region", "moment 2")
 
