@@ -68,6 +68,11 @@ class Ground:
         depth = distance_transform_edt(lit) - MARGIN if not lit.all() else np.full(shape, float(max(shape)))
         return cls(flat, corner, cell, cell * np.maximum(depth, 0.0))
 
+    @property
+    def margin(self) -> float:
+        """How well in metres the edge of what was seen is known."""
+        return MARGIN * self.cell
+
     def clear(self, places: FloatArray) -> FloatArray:
         """How far (n,) the floor under ``places`` (n, 3) lies inside what was seen of it; 0 where it was not seen."""
         index = np.floor((places @ self.flat.T - self.corner) / self.cell).astype(np.int64)

@@ -151,4 +151,9 @@ def _down(
     result[inner] += (height - result[inner] @ up)[:, None] * up
     hangs = clear > 0.0
     hangs[inner] |= hangs[rim][index]
+    over = inner[clear[inner] > 0.0]
+    if len(over):
+        # The edge of what was seen of the floor is known to a margin either way.
+        apart, _ = cKDTree(result[over] @ flat.T).query(result[inner] @ flat.T)
+        hangs[inner] |= apart < 2.0 * base.ground.margin
     return result, hangs
