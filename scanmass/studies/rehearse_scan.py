@@ -23,7 +23,8 @@ from scanmass.surface.refine import vertex_normals
 FloatArray = npt.NDArray[np.float64]
 
 _HALF_WAY = 0.5
-"""A sample is moved up to so far towards a neighbour of its view: other places of the same cover, never beyond it."""
+"""A sample is moved up to so far towards or away from a neighbour of its view: other places of the same cover. Towards
+alone would draw every rim in, and widen the gaps that the bounds hang on."""
 _NEIGHBOURS, _FARTHEST = 4, 2.0
 """Neighbours farther apart than so many median spacings lie across a gap: no sample is moved towards them."""
 _ASTRAY = 3.0
@@ -117,7 +118,7 @@ def _shifted(samples: FloatArray, rng: np.random.Generator) -> tuple[FloatArray,
     spacing = float(np.median(distance[:, 0]))
     row = np.arange(len(samples))
     which = rng.integers(distance.shape[1], size=len(samples))
-    share = _HALF_WAY * rng.random(len(samples))
+    share = _HALF_WAY * rng.uniform(-1.0, 1.0, len(samples))
     share[distance[row, which] > _FARTHEST * spacing] = 0.0
     moved: FloatArray = samples + share[:, None] * (samples[index[row, which]] - samples)
     return moved, spacing

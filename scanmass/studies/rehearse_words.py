@@ -40,8 +40,8 @@ def assumptions(plan: Plan) -> tuple[Note, ...]:
     found.append(
         Note(
             "views-as-they-were",
-            f"Each view sees what it saw, at other places up to half-way to the next sample: {ways}"
-            f"{'else ' if known else ''}at the nearest places of the surface. Nothing unseen becomes seen.",
+            f"Each view sees what it saw, at other places up to half the way to the next sample off: {ways}"
+            f"{'else ' if known else ''}at the nearest places of the surface. What was not seen stays unseen.",
         )
     )
     if len(plan.strays) or len(plan.beside):
