@@ -15,7 +15,7 @@ from scanmass.surface.surface import Underside
 class Base:
     """How the object stands and what is known of its underside.
 
-    ``level`` is the height of the contact plane, ``lowest`` the height below which nothing is; ``samples`` (k, 3) are
+    ``level`` is the height of the contact plane, ``lowest`` of what was seen; ``samples`` (k, 3) are
     the scan's and ``pitch`` their spacing, 0 where they are a mesh's; ``supported``: a support gave the plane;
     ``ground``: where the support was seen, None where it was not.
     """

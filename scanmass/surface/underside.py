@@ -11,7 +11,7 @@ from scanmass.geometry.polyhedron import face_areas
 from scanmass.surface.base import Base
 from scanmass.surface.level import standing_level
 from scanmass.surface.mesh import FloatArray, Mesh
-from scanmass.surface.span import Mask, Span, converges, corners, floor, low_membrane, tangent_cone
+from scanmass.surface.span import UNSURE_END, Mask, Span, converges, corners, floor, low_membrane, tangent_cone
 from scanmass.surface.standing import resting_plane
 from scanmass.surface.whereabouts import whereabouts
 
@@ -35,6 +35,8 @@ def underside_span(mesh: Mesh, region: Mask, base: Base, normals: FloatArray, no
     near = low_membrane(mesh, region, normals, up, level, base.samples, base.pitch)
     if base.underside in ("flat", "hollow"):
         return _declared(mesh, region, base, normals, near, up, level, notes)
+    # Walls go on below their lowest samples by some of the spacing; a support, or a mesh, ends where it ends.
+    lowest -= 0.0 if base.supported else UNSURE_END * base.pitch
     far, _ = _down(mesh, region, base, normals, near, up, lowest, inward=False)
     lid = tangent_cone(mesh, region, normals) if not base.supported and converges(mesh, region, up) else None
     if lid is not None:
