@@ -44,7 +44,7 @@ def assemble(
     center["offsets"] = offsets(bounds, points, scale)
     center["height_above_base_m"] = None
     if shape.up is not None and shape.base_height is not None:
-        center["height_above_base_m"] = height(bounds, shape.surface.closures, shape.up, shape.base_height, scale)
+        center["height_above_base_m"] = height(bounds, shape.up, shape.base_height, scale)
     now = standing(bounds, shape.surface.underside)
     total = sum(document.returns(scan) for scan in scans)
     said = [n for scan in scans for n in scan.assumptions]
@@ -70,7 +70,7 @@ def assemble(
         "inertia_kg_m2": found["inertia_kg_m2"],
         "principal": found["principal"],
         "density": document.density_block(filled),
-        "checks": document.checks_block(difference),
+        "checks": document.checks_block(difference) | found["checks"],
         "budget": found["budget"],
         "next_measurement": advice_block(next_measurement(now)),
         "assumptions": document.note_rows(

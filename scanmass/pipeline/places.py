@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
@@ -11,8 +11,6 @@ from scipy.stats import norm
 from scipy.stats import t as student
 
 from scanmass.doubt import Figure
-from scanmass.geometry.moments import centroid, translated
-from scanmass.surface.surface import Closure
 from scanmass.uncertainty.bounds import Bounds
 
 FloatArray = npt.NDArray[np.float64]
@@ -48,31 +46,18 @@ def _growth(scale: Figure | None) -> float:
     return 0.0 if scale is None or scale.std is None else float(scale.std) / float(scale.value)
 
 
-def height(
-    bounds: Bounds, closures: Sequence[Closure], up: FloatArray, base: float, scale: Figure | None = None
-) -> dict[str, float | None]:
+def height(bounds: Bounds, up: FloatArray, base: float, scale: Figure | None = None) -> dict[str, float | None]:
     """The centre of mass above the plane ``up . r = base``, metres; the plane is taken as exact, its distance scales.
 
-    The ends are those of every shape the unseen part could have, each with the random and declared half-width.
+    The ends are those of every shape in the bounds' bracket, each with the random and declared half-width.
     """
     value = float(up @ bounds.com.value) - base
-    heights = [value, *(float(up @ centre) - base for centre in _centres(bounds, closures))]
+    heights = bounds.centres @ up - base
     if bounds.com_covariance is None:
         return {"value": value, "std": None, "low": None, "high": None}
-    stretch = _growth(scale) * max(abs(number) for number in heights)
+    stretch = _growth(scale) * float(np.abs(heights).max())
     std = float(np.sqrt(up @ bounds.com_covariance @ up + stretch**2))
     degrees = bounds.com.degrees_of_freedom
     nu = np.inf if degrees is None else float(np.min(degrees))
     reach = float(student.ppf(0.5 + 0.5 * bounds.level, nu)) * std
-    return {"value": value, "std": std, "low": min(heights) - reach, "high": max(heights) + reach}
-
-
-def _centres(bounds: Bounds, closures: Sequence[Closure]) -> list[FloatArray]:
-    """Centres of mass (3,) under the other closures: the outer part gives or takes the difference."""
-    parts = bounds.parts
-    whole = parts.moments.sum(axis=0)
-    outer = parts.density_values[0]
-    return [
-        centroid(parts.mass_moments + outer * (translated(c.moments, -bounds.centre) - whole)) + bounds.centre
-        for c in closures
-    ]
+    return {"value": value, "std": std, "low": float(heights.min()) - reach, "high": float(heights.max()) + reach}

@@ -13,7 +13,7 @@ from scanmass.doubt import Figure
 from scanmass.errors import Declined, Note
 from scanmass.geometry.moments import centroid, translated
 from scanmass.surface.surface import Surface
-from scanmass.uncertainty import noise, patches
+from scanmass.uncertainty import noise, patches, pose_check, weightings
 from scanmass.uncertainty.axes import PrincipalAxes
 from scanmass.uncertainty.bracket import Bound, at_least_nothing, axes_over, merged
 from scanmass.uncertainty.budget import BudgetRow, bracket_row, budget
@@ -41,6 +41,7 @@ class Bounds:
     ``com_covariance`` (3, 3) and ``region``: random and declared parts; None where no claim is possible.
     ``axes``: cones widened to hold the axes of every shape the unseen part could have.
     ``replicates``: of the shape as measured, None where no claim is possible; ``closure_replicates``: of the others.
+    ``centres`` (s, 3): centre of mass of every shape, the measured one first.
     ``terms``: sources of doubt of the volume moments ``parts.moments`` about ``centre``.
     """
 
@@ -61,6 +62,7 @@ class Bounds:
     patches: patches.Patches
     replicates: Replicates | None
     closure_replicates: dict[str, Replicates]
+    centres: FloatArray
     observed_fraction: float
     assumptions: tuple[Note, ...]
     warnings: tuple[Note, ...]
@@ -96,8 +98,14 @@ def bound(
     wanted = Declared() if declared is None else declared
     parts, centre = _about_own_centre(part_moments, densities, materials)
     patched = patches.make(surface, cloud, centre=centre, count=_patch_count(cloud))
-    model = _noise(surface, cloud, patched, wanted, coarse, level)
+    model = _noise(surface, cloud, patched, wanted, coarse, seed)
     shapes = {"": parts} | {c.name: _closed(parts, translated(c.moments, -centre)) for c in surface.closures}
+    closed = len(shapes)
+    for other in model.alternatives:
+        if other.beyond:
+            change = on_outer_part(other.change[None], parts)[0]
+            moved = {f"{name}, {other.name}": replace(s, moments=s.moments + change) for name, s in shapes.items()}
+            shapes |= dict(list(moved.items())[:closed])
 
     def carried(by: NoiseModel) -> tuple[tuple[Term, ...], dict[str, Replicates], dict[str, ShapeFigures]]:
         terms = _terms(surface, cloud, patched, by, wanted, parts, centre)
@@ -133,7 +141,7 @@ def bound(
         inertia=merged([f.inertia for f in figures.values()]),
         principal=merged([f.principal for f in figures.values()]),
         axes=axes_over(list(figures.values())),
-        budget=_budget(figures),
+        budget=_budget(figures, closed, model, parts),
         noise=model,
         parts=parts,
         centre=centre,
@@ -141,6 +149,7 @@ def bound(
         patches=patched,
         replicates=draws.pop("", None),
         closure_replicates=draws,
+        centres=np.array([f.com.value for f in figures.values()]),
         observed_fraction=patched.observed_fraction,
         assumptions=model.assumptions + _assumptions(wanted, model),
         warnings=model.warnings + _warnings(surface, patched, parts, redrawn),
@@ -181,10 +190,10 @@ def _noise(
     patched: patches.Patches,
     declared: Declared,
     coarse: tuple[FloatArray, IndexArray] | None,
-    level: float,
+    seed: int,
 ) -> NoiseModel:
     if noise.enough_views(patched):
-        return noise.from_views(patched)
+        return noise.from_views(patched, seed)
     if declared.noise_std is not None:
         return from_declaration(patched, declared)
     model = None
@@ -239,14 +248,32 @@ def _least_degrees(estimate: Estimate) -> float | None:
     return least if np.isfinite(least) else None
 
 
-def _budget(figures: dict[str, ShapeFigures]) -> tuple[BudgetRow, ...]:
+def _budget(figures: dict[str, ShapeFigures], closed: int, model: NoiseModel, parts: Parts) -> tuple[BudgetRow, ...]:
+    """Sources, the bracket of the first ``closed`` shapes, and what the checks of the views found."""
     first = figures[""]
     rows = budget(first.effects, first.mass.std is not None)
-    if len(figures) > 1:
-        masses = np.array([float(f.mass.value) for f in figures.values()])
-        centres = np.array([f.com.value for f in figures.values()])
-        rows += (bracket_row("unseen surface", masses, centres),)
+    if closed > 1:
+        shapes = list(figures.values())[:closed]
+        masses = np.array([float(f.mass.value) for f in shapes])
+        rows += (bracket_row("unseen surface", masses, np.array([f.com.value for f in shapes])),)
+    if model.alternatives:
+        changes = np.stack([np.zeros(10), *(a.change for a in model.alternatives if a.beyond or not _any(model))])
+        row = bracket_row(pose_check.SOURCE, *_masses_and_centres(changes, parts))
+        rows += (row if _any(model) else replace(row, kind="random"),)
+    if model.weightings:
+        changes = np.stack([np.zeros(10), *model.weightings.values()])
+        rows += (replace(bracket_row(weightings.SOURCE, *_masses_and_centres(changes, parts)), kind="random"),)
     return rows
+
+
+def _any(model: NoiseModel) -> bool:
+    return any(a.beyond for a in model.alternatives)
+
+
+def _masses_and_centres(changes: FloatArray, parts: Parts) -> tuple[FloatArray, FloatArray]:
+    """Masses (c,) and centres (c, 3) about the object's own with the outer part changed by (c, 10)."""
+    mass = parts.mass_moments + parts.density_values[0] * changes
+    return mass[:, 0], centroid(mass)
 
 
 def _assumptions(declared: Declared, model: NoiseModel) -> tuple[Note, ...]:

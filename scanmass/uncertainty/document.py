@@ -11,7 +11,7 @@ from scanmass.uncertainty.advice import Advice
 from scanmass.uncertainty.bounds import Bounds
 from scanmass.uncertainty.bracket import Bound
 from scanmass.uncertainty.budget import BudgetRow
-from scanmass.uncertainty.noise import NoiseModel
+from scanmass.uncertainty.noise import NoiseModel, ratios
 
 Plain = dict[str, Any]
 
@@ -27,6 +27,7 @@ def as_document(bounds: Bounds) -> Plain:
         "inertia_kg_m2": {key: plain(getattr(bounds.inertia, key)) for key in ("value", "std", "low", "high")}
         | {"about": "center_of_mass", "axes": "scan", "sign": "I = integral (r.r E - r r^T) dm"},
         "principal": [_principal(bounds, k) for k in range(3)],
+        "checks": checks(bounds),
         "budget": [_row(row) for row in bounds.budget],
         "assumptions": [{"code": n.code, "text": n.text} for n in bounds.assumptions],
         "warnings": [{"code": n.code, "text": n.text} for n in bounds.warnings],
@@ -101,7 +102,59 @@ def _noise(noise: NoiseModel) -> Plain:
         "shift_std_m": plain(noise.shift_std),
         "rotation_std_rad": plain(noise.rotation_std),
         "views": noise.views,
+        "text": in_words(noise),
     }
+
+
+def in_words(noise: NoiseModel) -> str | None:
+    """The noise as people say it, None where it is not known."""
+    if noise.std is None:
+        return None
+    said = [f"{_length(noise.std)}" + (f", alike over {_length(noise.length)}" if noise.length and noise.std else "")]
+    if noise.shift_std:
+        said.append(f"per-view shift {_length(noise.shift_std)}")
+    if noise.rotation_std:
+        said.append(f"per-view turn {np.degrees(noise.rotation_std):.2g} degrees")
+    return ", ".join(said)
+
+
+def _length(metres: float) -> str:
+    return f"{1000 * metres:.2g} mm"
+
+
+def checks(bounds: Bounds) -> Plain:
+    """What the views were asked besides, as changes of volume (m3) and centre of mass (m); None without views.
+
+    ``poses``: the views laid on one another again, with what chance alone would do (one standard deviation);
+    ``weightings``: other weights of the views; ``bootstrap``: standard deviations
+    of errors resampled by views, and by patches of views, over those drawn from the fit.
+    """
+    model = bounds.noise
+    if model.basis != "views" or model.resampled is None:
+        return {"poses": None, "weightings": None, "bootstrap": None}
+    volume = float(bounds.parts.moments[:, 0].sum())
+    by = {name: ratios(drawn, model.parts) for name, drawn in zip(("views", "patches"), model.resampled, strict=True)}
+    return {
+        "poses": [
+            {
+                "name": a.name,
+                **_change(a.change, volume),
+                "chance_volume_m3": plain(np.sqrt(a.expected[0, 0])),
+                "chance_com_m": plain(np.sqrt(np.diag(a.expected)[1:4]) / volume),
+                "beyond_chance": a.beyond,
+            }
+            for a in model.alternatives
+        ],
+        "weightings": [{"name": name, **_change(change, volume)} for name, change in model.weightings.items()],
+        "bootstrap": [
+            {"resampled": name, "volume_ratio": plain(ratio[0]), "com_ratio": plain(ratio[1:])}
+            for name, ratio in by.items()
+        ],
+    }
+
+
+def _change(change: npt.NDArray[np.float64], volume: float) -> Plain:
+    return {"volume_change_m3": plain(change[0]), "com_change_m": plain(change[1:4] / volume)}
 
 
 def _row(row: BudgetRow) -> Plain:

@@ -11,9 +11,8 @@ from scanmass.uncertainty.bounds import Bounds
 from scanmass.uncertainty.bracket import Bound
 from scanmass.uncertainty.budget import BudgetRow
 from scanmass.uncertainty.noise import LEAST_VIEWS, Basis
+from scanmass.uncertainty.pose_check import SOURCE as COMMON_ERROR
 
-COMMON_ERROR = "pose or incidence error common to all views"
-"""The budget's row of what re-registration changes, random or a bracket."""
 WEIGHING = 0.005
 """Half-width at 95 % of a weighing over the mass: a hoist cell or a pallet-jack scale does so well (common
 practice, no source)."""
@@ -64,7 +63,10 @@ def standing(bounds: Bounds, underside: str) -> Standing:
 
 
 def measurements(now: Standing) -> Iterator[Measurement]:
-    names = {row.source for row in now.rows}
+    # A row of a check that chance explains holds half ranges alone, and nothing of the bounds.
+    names = {
+        row.source for row in now.rows if row.kind == "bracket" or row.mass_std is not None or row.com_std is not None
+    }
     brackets = {row.source for row in now.rows if row.kind == "bracket"} - {COMMON_ERROR}
     if now.mass_reach is not None:
         settled = {COMMON_ERROR: _by_weighing(now)} if COMMON_ERROR in names else {}
@@ -82,7 +84,7 @@ def measurements(now: Standing) -> Iterator[Measurement]:
     by_scans = by_more_scans(now)
     if by_scans is not None:
         yield by_scans
-    by_length = {row.source: _by_length(now, row) for row in now.rows if row.source in ("scale", COMMON_ERROR)}
+    by_length = {row.source: _by_length(now, row) for row in now.rows if row.source in names & {"scale", COMMON_ERROR}}
     if by_length:
         what = f"measure one long distance on the object to {100 * LENGTH:g} % and compare it with the scan's"
         yield Measurement(what, by_length)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Literal
 
 import numpy as np
@@ -12,10 +12,11 @@ from scipy.spatial.distance import cdist
 from scipy.stats import f as fisher
 
 from scanmass.errors import Note
+from scanmass.uncertainty import resample, weightings
 from scanmass.uncertainty.field import Field, correlation, fit_field, scatter
-from scanmass.uncertainty.following import shares_of
 from scanmass.uncertainty.intervals import welch_satterthwaite
 from scanmass.uncertainty.patches import Patches
+from scanmass.uncertainty.pose_check import Alternative, alternatives
 from scanmass.uncertainty.rigid import RigidFit, fit_rigid, shrunk
 from scanmass.uncertainty.sources import factor
 
@@ -25,6 +26,9 @@ Basis = Literal["views", "declared", "upper_bound", "none"]
 LEAST_VIEWS = 3
 _MOST_DEGREES = 60.0
 _ROUNDS = 2
+_DRAWS = 2000
+_THIRD = 4.0 / 3.0
+COMMON_ERROR = "pose-or-incidence-error"
 _LEAST_SHARED = 0.2
 """Below this share of the seen area in common, between-view differences say little of the whole."""
 
@@ -35,6 +39,8 @@ class NoiseModel:
 
     ``std`` and ``length`` of the correlated part in metres; ``shift_std`` metres and ``rotation_std`` radians of a
     view's pose; None where not known. ``parts``: (name, rows (k, 10), degrees of freedom or None) for each source.
+    ``alternatives``: what errors common to all views would change; ``weightings``: changes (10,) by other weights of
+    the views; ``resampled``: errors (n, 10) drawn from residuals, by views and by blocks of their patches.
     """
 
     basis: Basis
@@ -45,6 +51,9 @@ class NoiseModel:
     rotation_std: float | None = None
     views: int = 0
     parts: tuple[tuple[str, FloatArray, float | None], ...] = ()
+    alternatives: tuple[Alternative, ...] = ()
+    weightings: dict[str, FloatArray] = field(default_factory=dict)
+    resampled: tuple[FloatArray, FloatArray] | None = None
     assumptions: tuple[Note, ...] = ()
     warnings: tuple[Note, ...] = ()
 
@@ -62,7 +71,7 @@ def enough_views(patches: Patches) -> bool:
     return int((seen_by_pairs.sum(axis=0) >= 12).sum()) >= LEAST_VIEWS and shared_fraction(patches) >= _LEAST_SHARED
 
 
-def from_views(patches: Patches) -> NoiseModel:
+def from_views(patches: Patches, seed: int = 0) -> NoiseModel:
     """Noise of the moments from what differs between views (design 5.4 to 5.7).
 
     An error common to all views cannot be seen: this is the random part, between views.
@@ -76,27 +85,33 @@ def from_views(patches: Patches) -> NoiseModel:
         raise ValueError(f"{LEAST_VIEWS} views that share patches are needed, got {patches.views}")
     patches = patches.some_seen()
     fixed = fit_rigid(patches)
-    field = fit_field(patches, fixed.left)
+    own_field = fit_field(patches, fixed.left)
     for _ in range(_ROUNDS):
-        rigid = shrunk(patches, fixed, *_of_one_view(patches, field))
-        field = fit_field(patches, rigid.left)
+        rigid = shrunk(patches, fixed, *_of_one_view(patches, own_field))
+        own_field = fit_field(patches, rigid.left)
     share, v = patches.shares(), patches.views
-    covariances = (field_covariance(patches, field, share), *_pose_covariances(patches, rigid, share))
-    degrees = (min(_MOST_DEGREES, field.degrees_of_freedom), rigid.shift_degrees, rigid.turn_degrees)
-    stretch = _stretch(between_views(patches, share), v - 1.0, covariances, degrees)
+    covariances = (field_covariance(patches, own_field, share), *_pose_covariances(patches, rigid, share))
+    degrees = (min(_MOST_DEGREES, own_field.degrees_of_freedom), rigid.shift_degrees, rigid.turn_degrees)
+    stretch = _stretch(resample.covariance(patches), v - 1.0, covariances, degrees)
     names = ("scan noise", "view shifts", "view turns")
+    parts = tuple(
+        (name, factor(covariance) * stretch, nu)
+        for name, covariance, nu in zip(names, covariances, degrees, strict=True)
+    )
+    others = alternatives(patches, rigid, *_of_one_view(patches, own_field))
+    drawn = resample.by_views(patches, _DRAWS, seed), resample.by_patches(patches, own_field.length, _DRAWS, seed)
     return NoiseModel(
         "views",
-        std=field.std,
-        length=field.length,
-        shape=field.shape,
+        std=own_field.std,
+        length=own_field.length,
+        shape=own_field.shape,
         shift_std=rigid.shift_std,
         rotation_std=rigid.turn_std,
         views=v,
-        parts=tuple(
-            (name, factor(covariance) * stretch, nu)
-            for name, covariance, nu in zip(names, covariances, degrees, strict=True)
-        ),
+        parts=parts,
+        alternatives=others,
+        weightings=weightings.changes(patches),
+        resampled=drawn,
         assumptions=(
             Note(
                 "errors-common-to-all-views-not-seen",
@@ -104,7 +119,7 @@ def from_views(patches: Patches) -> NoiseModel:
                 "offset of the surface, a common pose error) does not show in it and counts only where declared.",
             ),
         ),
-        warnings=_incidence_warning(patches, rigid, share, covariances[0]),
+        warnings=_common_error(others) + _unlike(drawn[0], parts, stretch, v),
     )
 
 
@@ -137,25 +152,6 @@ def _pose_covariances(patches: Patches, rigid: RigidFit, share: FloatArray) -> t
     return summed(rigid.shift_std, patches.normals), summed(rigid.turn_std, turning)
 
 
-def between_views(patches: Patches, share: FloatArray) -> FloatArray:
-    """Covariance (10, 10) of the moments by what each view adds, whatever the kind of its error.
-
-    q_v = sum_j G_j a_jv u_jv / sqrt(1 - a_jv), u the residual against the shares' mean; the covariance is
-    sum_v q_v q_v^T: the jackknife by views with its leverages (MacKinnon & White 1985). With equal shares it is
-    V/(V - 1) sum q_v q_v^T, the variance of a mean of V views. Where a view alone saw a patch it says nothing, so this
-    is a floor and not the whole.
-    """
-    seen = patches.seen & np.isfinite(patches.residuals)
-    own = shares_of(np.where(seen, share, 0.0))
-    r = np.where(seen, np.nan_to_num(patches.residuals), 0.0)
-    about = np.where(seen, r - (own * r).sum(axis=1)[:, None], 0.0)
-    able = own < 1.0 - 1e-9
-    each = np.where(able, own * about / np.sqrt(np.where(able, 1.0 - own, 1.0)), 0.0)
-    q = patches.moments.T @ each
-    result: FloatArray = q @ q.T
-    return result
-
-
 def _stretch(
     floor: FloatArray, floor_degrees: float, covariances: Sequence[FloatArray], degrees: Sequence[float | None]
 ) -> FloatArray:
@@ -173,16 +169,43 @@ def _stretch(
     return result
 
 
-def _incidence_warning(patches: Patches, rigid: RigidFit, share: FloatArray, noise: FloatArray) -> tuple[Note, ...]:
-    """A lean of the residuals with incidence that, if an error, outweighs the noise of the volume."""
-    if rigid.incidence == 0.0:
-        return ()
-    lean = rigid.incidence * np.where(share > 0, np.nan_to_num(patches.towards), 0.0)
-    volume = float((patches.moments[:, 0] * (share * lean).sum(axis=1)).sum())
-    if abs(volume) <= 2.0 * np.sqrt(noise[0, 0]):
+def _common_error(others: Sequence[Alternative]) -> tuple[Note, ...]:
+    beyond = [other.name for other in others if other.beyond]
+    if not beyond:
         return ()
     text = (
-        f"Residuals change by {1000 * abs(rigid.incidence):.2f} mm between grazing and square sight. If that is an "
-        f"error of the scanner, the volume is off by up to {1e6 * abs(volume):.3g} cm3, more than its random part."
+        f"The views fit each other better another way ({' or '.join(beyond)}), by more than chance explains: they "
+        "seem to share an error of pose or of incidence. Which is right, these views cannot tell, so the bounds reach "
+        "from one to the other. One known length on the object, or a weighing, settles it."
     )
-    return (Note("incidence-bias", text),)
+    return (Note(COMMON_ERROR, text),)
+
+
+def ratios(drawn: FloatArray, parts: Sequence[tuple[str, FloatArray, float | None]]) -> FloatArray:
+    """(4,): standard deviation of resampled over that of modelled errors, of the volume and the first moments."""
+    variance = np.sum([(rows[:, :4] ** 2).sum(axis=0) for _, rows, _ in parts], axis=0)
+    result: FloatArray = np.divide(drawn[:, :4].std(axis=0), np.sqrt(variance), out=np.ones(4), where=variance > 0)
+    return result
+
+
+def _unlike(
+    drawn: FloatArray, parts: Sequence[tuple[str, FloatArray, float | None]], stretch: FloatArray, views: int
+) -> tuple[Note, ...]:
+    """The two bootstraps beside each other: unlike by more than a third, and by more than so few views explain."""
+    ratio = ratios(drawn, parts)
+    most, least = float(ratio.max()), float(ratio.min())
+    few = float(np.sqrt(fisher.ppf(0.01 / 4, views - 1.0, _MOST_DEGREES)))
+    more = most > _THIRD and bool((stretch[:4] > 1.0).any())
+    if not more and least > min(1.0 / _THIRD, few):
+        return ()
+    most = most if more else least
+    why = (
+        "a view is worse than the others, or its error is of a kind the model does not know (a bend, stripes)"
+        if more
+        else "the model holds more noise than the views show, which few or little overlapping views allow"
+    )
+    text = (
+        f"Errors drawn anew from the views and patches themselves are {most:.2g} times as large as those of the "
+        f"fitted noise. The likely reason: {why}. The bounds are those of the fitted noise."
+    )
+    return (Note("bootstraps-disagree", text),)

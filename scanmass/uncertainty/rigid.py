@@ -102,10 +102,10 @@ def shrunk(patches: Patches, fit: RigidFit, together: FloatArray, alone: FloatAr
     r = np.where(fit.used, patches.residuals, 0.0)
     if fit.incidence != 0.0:
         r = r - fit.incidence * np.where(fit.used, patches.towards, 0.0)
-    per_view = _right_side(patches, fit.used)
+    normal, per_view = normal_equations(patches, fit.used, with_incidence=False)
     right = sum(k @ r[:, b] for b, k in enumerate(per_view))
     noise = sum(k @ together @ k.T + (k * alone[:, b]) @ k.T for b, k in enumerate(per_view))
-    values, vectors = np.linalg.eigh(_normal(patches, fit.used))
+    values, vectors = np.linalg.eigh(normal)
     strong = values > _WEAK * values[-1]
     values, vectors = values[strong], vectors[:, strong]
     found = (vectors.T @ right) / values
@@ -146,31 +146,57 @@ def _degrees(variances: FloatArray, parts: FloatArray, expected: FloatArray, vie
 
 def _solve(patches: Patches, used: npt.NDArray[np.bool_], with_incidence: bool) -> tuple[FloatArray, FloatArray]:
     """Solution (6 V + 1,) with turns times the size, and what is left (J, V)."""
-    v = patches.views
-    weight, share = _weights(patches, used)
-    arms = _arms(patches)
     r = np.where(used, patches.residuals, 0.0)
-    cosine = np.where(used, patches.towards, 0.0) if with_incidence else np.zeros_like(r)
+    normal, per_view = normal_equations(patches, used, with_incidence)
+    solution = least_squares(normal) @ sum(k @ r[:, b] for b, k in enumerate(per_view))
+    motions = np.append(solution, [] if with_incidence else [0.0])
+    misfit = r - effects_of(patches, used, motions[:-1], float(motions[-1]))
+    _, share = _weights(patches, used)
+    return motions, np.where(used, misfit - (share * misfit).sum(axis=1)[:, None], 0.0)
+
+
+def normal_equations(
+    patches: Patches, used: npt.NDArray[np.bool_], with_incidence: bool
+) -> tuple[FloatArray, list[FloatArray]]:
+    """Normal matrix (k, k), and for each view the matrix (k, J) from its residuals to the right side.
+
+    Unknowns: shifts (3 V), turns times the size (3 V), and ``with_incidence`` a metres per unit cosine; the shape s_j
+    is eliminated. Motions common to all views are free: see :func:`least_squares`.
+    """
     per_view = _right_side(patches, used)
-    normal = np.zeros((6 * v + 1, 6 * v + 1))
-    normal[:-1, :-1] = _normal(patches, used)
-    right = np.zeros(6 * v + 1)
-    right[:-1] = sum(k @ r[:, b] for b, k in enumerate(per_view))
-    normal[:-1, -1] = normal[-1, :-1] = sum(k @ cosine[:, b] for b, k in enumerate(per_view))
-    c0 = cosine - (share * cosine).sum(axis=1)[:, None]
-    normal[-1, -1], right[-1] = (weight * c0 * c0).sum(), (weight * c0 * r).sum()
-    # The mean motion of all views is the object's own; six directions of zero, and a ball has more.
-    gauge = np.zeros((6, 6 * v + 1))
-    for k in range(3):
-        gauge[k, k : 3 * v : 3] = gauge[3 + k, 3 * v + k : 6 * v : 3] = 1.0
-    normal += np.trace(normal) / (6 * v) * gauge.T @ gauge
-    values, vectors = np.linalg.eigh(normal)
+    arms = _arms(patches)
+    columns = [_per_view(arms, b, patches.views) for b in range(patches.views)]
+    if with_incidence:
+        weight, share = _weights(patches, used)
+        cosine = np.where(used, patches.towards, 0.0)
+        about = weight * (cosine - (share * cosine).sum(axis=1)[:, None])
+        per_view = [np.vstack([k, about[:, b]]) for b, k in enumerate(per_view)]
+        columns = [np.hstack([c, cosine[:, b, None]]) for b, c in enumerate(columns)]
+    normal: FloatArray = np.sum([k @ c for k, c in zip(per_view, columns, strict=True)], axis=0)
+    return normal, per_view
+
+
+def least_squares(normal: FloatArray) -> FloatArray:
+    """The inverse (k, k) of a normal matrix on what it feels; the smallest solution, so common motions are zero."""
+    values, vectors = np.linalg.eigh(0.5 * (normal + normal.T))
     strong = values > _WEAK * values[-1]
-    solution = vectors[:, strong] @ ((vectors[:, strong].T @ right) / values[strong])
-    motion = np.stack([arms @ solution[_columns(a, v)] for a in range(v)], axis=1)
-    misfit = r - motion - solution[-1] * cosine
-    misfit -= (share * misfit).sum(axis=1)[:, None]
-    return solution, misfit
+    result: FloatArray = (vectors[:, strong] / values[strong]) @ vectors[:, strong].T
+    return result
+
+
+def effects_of(
+    patches: Patches, used: npt.NDArray[np.bool_], motions: FloatArray, incidence: float = 0.0
+) -> FloatArray:
+    """(J, V): how far motions (6 V,) and a lean with incidence move each view's patch outward."""
+    arms, v = _arms(patches), patches.views
+    moved: FloatArray = np.stack([arms @ motions[_columns(a, v)] for a in range(v)], axis=1)
+    return moved + incidence * np.where(used, patches.towards, 0.0) if incidence else moved
+
+
+def _per_view(arms: FloatArray, view: int, views: int) -> FloatArray:
+    result = np.zeros((len(arms), 6 * views))
+    result[:, _columns(view, views)] = arms
+    return result
 
 
 def _arms(patches: Patches) -> FloatArray:
@@ -200,14 +226,6 @@ def _right_side(patches: Patches, used: npt.NDArray[np.bool_]) -> list[FloatArra
             matrix[_columns(a, v)] = (arms * between[:, None]).T
         result.append(matrix)
     return result
-
-
-def _normal(patches: Patches, used: npt.NDArray[np.bool_]) -> FloatArray:
-    v, arms = patches.views, _arms(patches)
-    normal = np.empty((6 * v, 6 * v))
-    for b, matrix in enumerate(_right_side(patches, used)):
-        normal[:, _columns(b, v)] = matrix @ arms
-    return normal
 
 
 def _columns(view: int, views: int) -> npt.NDArray[np.int64]:

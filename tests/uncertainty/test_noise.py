@@ -3,12 +3,14 @@
 Fields are drawn by Cholesky factors; the true error of the moments is what the views' errors do through their shares.
 """
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from scipy.spatial.distance import cdist
 
 from scanmass.geometry.moments import monomials
-from scanmass.uncertainty import noise
+from scanmass.uncertainty import noise, resample
 from scanmass.uncertainty.intervals import coverage_factor, welch_satterthwaite
 from scanmass.uncertainty.patches import Patches
 from scanmass.uncertainty.rigid import fit_rigid
@@ -141,10 +143,10 @@ def test_floor_is_exact_where_all_views_see_all():
     """For equal weights it is the variance of the mean of the views' moments, with the n - 1 of a sample."""
     rng = np.random.default_rng(7)
     seen, _ = BODY.scan(rng, 6, all_round=True)
-    share = np.full_like(seen.residuals, 1 / 6)
+    seen = replace(seen, counts=np.full_like(seen.counts, 30.0))
     of_views = (seen.moments.T @ seen.residuals).T
     want = np.cov(of_views.T) / 6
-    assert noise.between_views(seen, share) == pytest.approx(want, rel=1e-9, abs=1e-12 * want.max())
+    assert resample.covariance(seen) == pytest.approx(want, rel=1e-9, abs=1e-12 * want.max())
 
 
 def test_shape_errors_common_to_all_views_cancel():
