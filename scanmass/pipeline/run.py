@@ -8,6 +8,7 @@ from collections.abc import Mapping, Sequence
 from concurrent.futures import Executor
 from dataclasses import replace
 from datetime import UTC, datetime
+from functools import partial
 from pathlib import Path
 from typing import Any
 
@@ -115,7 +116,7 @@ def _measured(
         part_moments=np.array([part.moments() for part in filled.parts]),
         declared=reading.declared,
         materials=[part.material for part in filled.parts],
-        coarse=coarse_surface(shape) if reading.declared.noise_std is None else None,
+        coarse=partial(coarse_surface, shape),
         level=settings.bounds.level,
         replicate_count=settings.bounds.replicates,
         seed=seed,

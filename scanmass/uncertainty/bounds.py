@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -28,6 +28,7 @@ from scanmass.uncertainty.sources import Parts, Term, on_outer_part
 
 FloatArray = npt.NDArray[np.float64]
 IndexArray = npt.NDArray[np.int64]
+Coarse = Callable[[], tuple[FloatArray, IndexArray] | None]
 
 _MANY_REDRAWN = 0.01
 _NOTABLY_UNSEEN = 0.02
@@ -76,7 +77,7 @@ def bound(
     part_moments: FloatArray,
     declared: Declared | None = None,
     materials: Sequence[str] | None = None,
-    coarse: tuple[FloatArray, IndexArray] | None = None,
+    coarse: Coarse | None = None,
     level: float = 0.95,
     replicate_count: int = 2000,
     seed: int = 0,
@@ -88,7 +89,8 @@ def bound(
     cloud : the samples with their views; None for a mesh that came without
     densities : one a part, kg/m3; parts with the same entry of ``materials`` share one draw
     part_moments : (P, 10), unit density, about the scan's origin; together they fill the surface
-    coarse : vertices and faces of a coarse surface of the same points, for an upper bound where nothing is declared
+    coarse : gives vertices and faces of a coarse surface of the same points, or None; asked where nothing else tells
+        of the noise
 
     Raises
     ------
@@ -189,17 +191,17 @@ def _noise(
     cloud: Cloud | None,
     patched: patches.Patches,
     declared: Declared,
-    coarse: tuple[FloatArray, IndexArray] | None,
+    coarse: Coarse | None,
     seed: int,
 ) -> NoiseModel:
     if noise.enough_views(patched):
         return noise.from_views(patched, seed)
     if declared.noise_std is not None:
         return from_declaration(patched, declared)
-    model = None
-    if coarse is not None:
+    model, found = None, None if coarse is None else coarse()
+    if found is not None:
         points = surface.vertices if cloud is None else cloud.points
-        model = upper_bound(patched, points, *coarse)
+        model = upper_bound(patched, points, *found)
     return unknown(patched) if model is None else model
 
 

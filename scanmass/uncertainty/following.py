@@ -17,6 +17,8 @@ IndexArray = npt.NDArray[np.int64]
 
 _OWN = 0.6
 """Where the surface follows a view by more (0: as far as its share, 1: wholly), its residuals there say nothing."""
+_FAINT = 0.05
+"""Differences between views of which less than this share is left are not raised again."""
 
 
 def weights_of_views(
@@ -75,7 +77,8 @@ def unfollowed(residuals: FloatArray, counts: FloatArray, weights: FloatArray) -
     about = np.where(seen, r - (share * r).sum(axis=1)[:, None], 0.0)
     identity = np.eye(residuals.shape[1])
     system = np.where(both, identity - a + share[:, None, :], identity)
-    solved: FloatArray = np.linalg.solve(system, about[:, :, None])[:, :, 0]
+    # Groups of views that follow one another and no other leave a direction that nothing tells of.
+    solved: FloatArray = (np.linalg.pinv(system, rcond=_FAINT) @ about[:, :, None])[:, :, 0]
     return np.where(seen, solved, np.nan)
 
 

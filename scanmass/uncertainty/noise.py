@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Literal
 
 import numpy as np
@@ -12,12 +12,13 @@ from scipy.spatial.distance import cdist
 from scipy.stats import f as fisher
 
 from scanmass.errors import Note
+from scanmass.seeds import stream
 from scanmass.uncertainty import resample, weightings
-from scanmass.uncertainty.field import Field, correlation, fit_field, scatter
+from scanmass.uncertainty.field import Field, correlation, fit_field, kept, scatter
 from scanmass.uncertainty.intervals import welch_satterthwaite
 from scanmass.uncertainty.patches import Patches
 from scanmass.uncertainty.pose_check import Alternative, alternatives
-from scanmass.uncertainty.rigid import RigidFit, fit_rigid, shrunk
+from scanmass.uncertainty.rigid import RigidFit, fit_rigid, shrunk, without_motion
 from scanmass.uncertainty.sources import factor
 
 FloatArray = npt.NDArray[np.float64]
@@ -89,6 +90,9 @@ def from_views(patches: Patches, seed: int = 0) -> NoiseModel:
     for _ in range(_ROUNDS):
         rigid = shrunk(patches, fixed, *_of_one_view(patches, own_field))
         own_field = fit_field(patches, rigid.left)
+    if own_field.std > 0:
+        found = kept(patches, own_field, lambda r: without_motion(patches, rigid, r), stream(seed, "field kept"))
+        own_field = replace(own_field, std=own_field.std / found**0.5)
     share, v = patches.shares(), patches.views
     covariances = (field_covariance(patches, own_field, share), *_pose_covariances(patches, rigid, share))
     degrees = (min(_MOST_DEGREES, own_field.degrees_of_freedom), rigid.shift_degrees, rigid.turn_degrees)

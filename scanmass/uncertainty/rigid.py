@@ -26,6 +26,7 @@ class RigidFit:
     ``shift_std``, ``turn_std``: standard deviation per axis of a view's motion, None from least squares alone;
     ``incidence``: metres per unit cosine of incidence, common to all views, 0 where scanner places are unknown;
     ``shift_degrees``, ``turn_degrees``: degrees of freedom of those standard deviations;
+    ``solving`` (6 V, 6 V): from the right side of the normal equations to the motions, turns times the size;
     ``used`` (J, V): what took part; ``left`` (J, V): residuals without each view's motion, NaN where unseen.
     """
 
@@ -38,6 +39,7 @@ class RigidFit:
     turn_std: float | None = None
     shift_degrees: float | None = None
     turn_degrees: float | None = None
+    solving: FloatArray | None = None
 
     def field(self, patches: Patches) -> FloatArray:
         """(J, V): how far each view's motion moves each patch outward."""
@@ -128,7 +130,17 @@ def shrunk(patches: Patches, fit: RigidFit, together: FloatArray, alone: FloatAr
         turn_std=float(turn) / patches.size,
         shift_degrees=degrees[0],
         turn_degrees=degrees[1],
+        solving=(vectors * (share / values)) @ vectors.T,
     )
+
+
+def without_motion(patches: Patches, fit: RigidFit, residuals: FloatArray) -> FloatArray:
+    """What other residuals (J, V) would leave of themselves, had they been taken through the same fit."""
+    if fit.solving is None:
+        raise ValueError("the fit is not one of shrunk motions")
+    r = np.where(fit.used, residuals, 0.0)
+    right = sum(k @ r[:, b] for b, k in enumerate(_right_side(patches, fit.used)))
+    return residuals - effects_of(patches, fit.used, fit.solving @ right)
 
 
 def _degrees(variances: FloatArray, parts: FloatArray, expected: FloatArray, views: int) -> tuple[float, float]:

@@ -163,7 +163,7 @@ def test_upper_bound_needs_its_coarse_surface(surface_of, on_sphere, cloud_of):
     ball = surface_of(trimesh.creation.icosphere(5, 0.5))
     coarse = trimesh.creation.icosphere(2, 0.5)
     cloud = cloud_of(0.5 * on_sphere(np.random.default_rng(0), 4000), np.zeros(4000, int))
-    found = run(ball, cloud, coarse=(np.array(coarse.vertices), np.array(coarse.faces, np.int64)))
+    found = run(ball, cloud, coarse=lambda: (np.array(coarse.vertices), np.array(coarse.faces, np.int64)))
     assert found.noise.basis == "upper_bound"
     assert found.volume.low < 0.5236 < found.volume.high
     assert not found.axes.determined.any()

@@ -191,3 +191,10 @@ def test_weights_of_views_are_those_of_the_fit(surface_of, cloud_of, on_sphere):
         inner = (view == 1) & (np.abs(points[:, 2]) > 0.2)
         # Twenty-four samples a vertex; three rounds on seven vertices raise the view's own by about a thirtieth.
         assert weights[inner, 1].mean() == pytest.approx(near, abs=0.05)
+
+
+def test_groups_of_views_that_follow_only_each_other_are_left_alone():
+    """Two views on one half of a patch, two on the other: nothing tells how the halves compare."""
+    weights = np.kron(np.eye(2), np.full((2, 2), 0.5))[None]
+    residuals = np.array([[1e-4, -1e-4, 2e-4, -2e-4]])
+    assert following.unfollowed(residuals, np.full((1, 4), 9.0), weights) == pytest.approx(residuals)
