@@ -62,6 +62,7 @@ def assemble(
         "scans": document.scan_rows(scans, shape.cloud),
         "removed": document.removed_rows(shape.removed, total),
         "surface": document.surface_block(shape.surface),
+        "views": document.views_block(shape.views),
         "noise": found["noise"]
         | {"declared_in": _declared_in(bounds, reading), "more_scans": advice_block(more_scans(now))},
         "volume_m3": found["volume_m3"],

@@ -11,6 +11,7 @@ import numpy as np
 import numpy.typing as npt
 
 from scanmass.cloud.cloud import REASONS, Cloud, Removed
+from scanmass.cloud.place import ViewsPlaced
 from scanmass.density.fill import DensityMap
 from scanmass.doubt import Figure
 from scanmass.errors import Note
@@ -90,6 +91,30 @@ def surface_block(surface: Surface) -> dict[str, Any]:
         "observed_fraction": float(area[~surface.inferred].sum() / area.sum()),
         "resolution_m": surface.resolution,
         "underside": surface.underside,
+    }
+
+
+def views_block(views: ViewsPlaced | None) -> dict[str, Any] | None:
+    """How several views lie in one frame: every overlapping pair, and what nothing can tell; None for a single view."""
+    if views is None:
+        return None
+    pairs = [
+        {
+            "first": views.names[pair.first],
+            "second": views.names[pair.second],
+            "overlap": pair.overlap,
+            "rms_m": pair.rms,
+            "shift_m": pair.shift,
+            "rotation_rad": pair.rotation,
+        }
+        for pair in views.pairs
+    ]
+    return {
+        "frames": views.frames,
+        "aligned_by": views.aligned_by,
+        "pairs": pairs,
+        "poses": None if views.poses is None else views.poses.tolist(),
+        "symmetric": None if views.symmetric is None else {"text": views.symmetric},
     }
 
 

@@ -14,7 +14,7 @@ from scanmass.pipeline.models import Body, Hollow, Pipeline
 from scanmass.pipeline.models_block import Block
 from scanmass.pipeline.models_certificate import GrowingLimit
 from scanmass.pipeline.models_quantities import Direction, Length, Level, MaterialName, Place, Quantity
-from scanmass.pipeline.models_read import reader_of
+from scanmass.pipeline.models_read import member_reader, reader_of
 
 _PLAIN = re.compile(r"[A-Za-z0-9](?:[A-Za-z0-9 ._/±+%-]*[A-Za-z0-9._/%])?", re.ASCII)
 _SPECIAL = ("null", "true", "false", "yes", "no", "on", "off")
@@ -55,7 +55,8 @@ def _rows(block: Block, prefix: str) -> Iterator[QuantityRow]:
             yield from _rows(value, f"{key}.")
         elif isinstance(value, dict):
             for place, at in value.items():
-                yield QuantityRow(f"{key}.{place}", Place().write(at), at, None, None, None, "exact")
+                if isinstance(member_reader(field), Place):
+                    yield QuantityRow(f"{key}.{place}", Place().write(at), at, None, None, None, "exact")
         elif value is None or (isinstance(value, str) and not isinstance(reader, MaterialName)):
             continue
         elif isinstance(reader, MaterialName):
@@ -86,7 +87,8 @@ def _lines(block: Block, indent: str) -> Iterator[str]:
             yield from _lines(value, indent + "  ")
         elif isinstance(value, dict):
             yield f"{indent}{name}:" + ("" if value else " {}")
-            yield from (f"{indent}  {_scalar(key)}: {Place().write(place)}" for key, place in value.items())
+            write = member_reader(field).write
+            yield from (f"{indent}  {_scalar(key)}: {write(place)}" for key, place in value.items())
         elif value is None:
             if not isinstance(block, Body):
                 yield f"{indent}{name}: null"

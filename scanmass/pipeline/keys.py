@@ -11,8 +11,7 @@ from pydantic.fields import FieldInfo
 
 from scanmass.pipeline.models import Body, Hollow, Pipeline
 from scanmass.pipeline.models_block import Block
-from scanmass.pipeline.models_quantities import Place
-from scanmass.pipeline.models_read import reader_of
+from scanmass.pipeline.models_read import member_reader, reader_of
 
 NOT_GIVEN = "not given"
 
@@ -78,7 +77,7 @@ def _rows(block: type[Block], prefix: str) -> Iterator[KeyRow]:
         if reader is not None:
             yield KeyRow(key, meaning, reader.allowed, _default(block, field), example)
         elif nested is None:
-            yield KeyRow(f"{key}.NAME", meaning, Place().allowed, "none", example)
+            yield KeyRow(f"{key}.NAME", meaning, member_reader(field).allowed, "none", example)
         if nested is not None:
             yield from _rows(nested, f"{key}.")
 

@@ -16,6 +16,7 @@ from scanmass.doubt import Figure
 from scanmass.errors import Note
 from scanmass.pipeline.models_block import Block
 from scanmass.pipeline.models_certificate import CertificateBlock
+from scanmass.pipeline.models_poses import GivenPose, PoseText
 from scanmass.pipeline.models_quantities import (
     Direction,
     Length,
@@ -34,7 +35,6 @@ UndersideWord = Literal["seen", "flat", "unknown"]
 UndersideKind = Literal["seen", "flat", "hollow", "unknown"]
 
 LATER = {
-    "scan.poses": "poses declared as trusted are",
     "inside.layers": "layers of other materials are",
     "inside.inserts": "inserts are",
     "weighings": "weighings are",
@@ -62,8 +62,17 @@ class Scan(Block):
         description="Length unit of the coordinates. Needed here or as --unit; never guessed.",
         examples=["mm"],
     )
-    frames: Annotated[Frames, OneOf.of(Frames, later=("own",))] = Field(
-        default="shared", description="Several scans: shared = already in one coordinate frame.", examples=["shared"]
+    frames: Annotated[Frames, OneOf.of(Frames)] = Field(
+        default="shared",
+        description="Several views: shared = already in one coordinate frame; own = each in its own, to be aligned to "
+        "the first.",
+        examples=["own"],
+    )
+    poses: dict[Annotated[str, Words()], Annotated[GivenPose, PoseText()]] = Field(
+        default={},
+        description="Pose of each view, by its file name (or FILE: VIEW where a file holds several), where another "
+        "program aligned them; the result is in the frame of the first scan.",
+        examples=["{front.ply: 1 0 0 0 0 0 0 mm, back.ply: 0 0 1 0 12.5 0 3 mm}"],
     )
     up: Annotated[Vector, Direction()] | None = Field(
         default=None,

@@ -162,3 +162,8 @@ def reader_of(field: FieldInfo) -> Any:
     for option in get_args(field.annotation):
         found += [mark for mark in getattr(option, "__metadata__", ()) if hasattr(mark, "allowed")]
     return found[0] if found else None
+
+
+def member_reader(field: FieldInfo) -> Any:
+    """The reader of the values of a mapping from names."""
+    return get_args(field.annotation)[1].__metadata__[0]

@@ -9,15 +9,18 @@ import numpy as np
 import numpy.typing as npt
 from scipy.spatial import cKDTree
 
+from scanmass.cloud.align_copies import refuse_copies
 from scanmass.cloud.clean import drop_edges
 from scanmass.cloud.cloud import REASONS, Cloud, Removed
 from scanmass.cloud.orient import orient
 from scanmass.cloud.outliers import outliers
+from scanmass.cloud.place import ViewsPlaced, view_names
 from scanmass.cloud.separate import Separated, separate
 from scanmass.cloud.thin import Thinned, thin
-from scanmass.errors import Declined, Note
+from scanmass.errors import Declined, Note, ScanFault
 from scanmass.geometry.moments import scaled, translated
 from scanmass.pipeline.models import Pipeline
+from scanmass.pipeline.placing import Placed, check_shared, place_given, place_own
 from scanmass.progress import Progress
 from scanmass.scans.scan import Scan
 from scanmass.surface.from_cloud import surface_from_cloud
@@ -41,7 +44,7 @@ class Shape:
     """A closed surface and what led to it, in metres in the working frame: the scan's frame less ``origin`` (3,).
 
     ``cloud``: the samples the surface was fitted to, None for a mesh; ``up`` (3,) unit or None;
-    ``base_height``: ``up . r`` of the plane the object stands on, None without up;
+    ``base_height``: ``up . r`` of the plane the object stands on, None without up; ``views``: how several views lie.
     """
 
     surface: Surface
@@ -53,6 +56,7 @@ class Shape:
     base_height: float | None
     assumptions: tuple[Note, ...]
     warnings: tuple[Note, ...]
+    views: ViewsPlaced | None = None
 
 
 def shape_of(scans: Sequence[Scan], settings: Pipeline, seed: int, progress: Progress) -> Shape:
@@ -79,23 +83,45 @@ def _of_mesh(scan: Scan, faces: FaceArray, settings: Pipeline, progress: Progres
 
 def _of_points(scans: Sequence[Scan], settings: Pipeline, seed: int, progress: Progress) -> Shape:
     declared = None if settings.scan.up is None else np.array(settings.scan.up)
-    thinned = thin(scans, progress=progress)
+    several = sum(len(scan.views) for scan in scans) > 1
+    placed, poses = None, None
+    if several and settings.scan.poses:
+        scans, poses = place_given(scans, settings)
+    elif several and settings.scan.frames == "own":
+        placed = place_own(scans, settings, seed, progress)
+        declared = placed.up
+    thinned = thin(scans, progress=progress) if placed is None else placed.thinned
+    if several and placed is None:
+        refuse_copies(thinned, view_names(scans))
     origin = 0.5 * (thinned.cloud.points.min(axis=0) + thinned.cloud.points.max(axis=0))
     tidy = settings.clean.outliers
     cloud, edges, notes = _moved(thinned.cloud, -origin), Removed.nothing(), thinned.warnings
     if tidy == "auto":
         cloud, edges, said = drop_edges(cloud)
         notes += said
-    found = separate(
-        cloud,
-        support=settings.clean.support,
-        clutter=tidy,
-        up=declared,
-        seed=seed,
-        progress=progress,
-    )
-    cloud = _finer(scans, thinned, found, origin, progress)
+    try:
+        found = separate(
+            cloud,
+            support=settings.clean.support if placed is None else "none",
+            clutter=tidy,
+            up=declared,
+            seed=seed,
+            progress=progress,
+        )
+    except ScanFault:
+        # Views that are not in one frame look like several objects.
+        if several and placed is None:
+            check_shared(_moved(cloud, origin), scans, settings, poses)
+        raise
     removed, notes = edges.joined(found.removed), notes + found.warnings
+    if placed is None:
+        cloud = _finer(scans, thinned, found, origin, progress)
+        views, said = check_shared(_moved(cloud, origin), scans, settings, poses)
+        notes += said
+    else:
+        found, cloud, views = _with_support(found, placed, origin), found.cloud, placed.views
+        away = replace(placed.removed, points=placed.removed.points - origin)
+        removed, notes = removed.joined(away), notes + placed.warnings
     if tidy == "auto":
         cloud, strays, said = outliers(cloud)
         removed, notes = removed.joined(strays), notes + said
@@ -122,7 +148,15 @@ def _of_points(scans: Sequence[Scan], settings: Pipeline, seed: int, progress: P
         settings,
         found.assumptions + oriented.assumptions,
         notes + oriented.warnings,
+        views,
     )
+
+
+def _with_support(found: Separated, placed: Placed, origin: FloatArray) -> Separated:
+    """What the first of several aligned views stood on, in the working frame."""
+    contact = None if placed.contact is None or placed.up is None else placed.contact - float(origin @ placed.up)
+    said = placed.assumptions + found.assumptions
+    return replace(found, up=placed.up, contact_height=contact, assumptions=said)
 
 
 def _finer(scans: Sequence[Scan], thinned: Thinned, found: Separated, origin: FloatArray, progress: Progress) -> Cloud:
@@ -157,6 +191,7 @@ def _finished(
     settings: Pipeline,
     assumptions: tuple[Note, ...],
     warnings: tuple[Note, ...],
+    views: ViewsPlaced | None = None,
 ) -> Shape:
     """The shape with the declared scale applied about the object's own centre."""
     if settings.clean.outliers == "auto":
@@ -181,6 +216,7 @@ def _finished(
         contact,
         assumptions + surface.assumptions,
         warnings + surface.warnings,
+        views,
     )
 
 
@@ -188,13 +224,13 @@ def _scaled(surface: Surface, factor: float, middle: FloatArray) -> Surface:
     def grown(moments: FloatArray) -> FloatArray:
         return translated(scaled(translated(moments, -middle), factor), middle)
 
-    coarse = surface.coarse_moments
+    coarse = surface.settling_moments
     return replace(
         surface,
         vertices=middle + factor * (surface.vertices - middle),
         resolution=factor * surface.resolution,
         closures=tuple(Closure(c.name, grown(c.moments)) for c in surface.closures),
-        coarse_moments=None if coarse is None else grown(coarse),
+        settling_moments=None if coarse is None else grown(coarse),
     )
 
 

@@ -198,6 +198,8 @@ def _scan(document: Document, use: Rulers) -> Iterator[Row]:
     if document["frame"]["up"] is not None:
         found = {"declared": "declared", "support": "square to the support that was found"}
         yield Row("up", wording.triple(document["frame"]["up"]), "", found[document["frame"]["up_from"]])
+    if document.get("views") is not None:
+        yield Row("views", remark=wording.views(document, use.length))
     yield Row("noise", remark=wording.noise(document, use.length))
     difference = document["checks"]["routes_relative_difference"]
     known = [d for d in difference.values() if d is not None]

@@ -33,7 +33,7 @@ def faults_of(tmp_path: Path, data: str | bytes) -> list[str]:
 
 KEYS = {
     "scan: {unti: mm}": "1: scan.unti: no such key (did you mean 'unit'?); "
-    "allowed: unit, frames, up, scale, noise_std, noise_length, certificate",
+    "allowed: unit, frames, poses, up, scale, noise_std, noise_length, certificate",
     "surface:\n  Under-side: flat": "2: surface.Under-side: no such key (did you mean 'underside'?); "
     "allowed: resolution, underside",
     "unit: mm": f"1: unit: no such key (did you mean 'scan.unit'?); allowed: {BLOCKS}",
@@ -45,10 +45,16 @@ KEYS = {
     "? [a, b]\n: 1": "1: file: a key that is not a text; a key is a word",
     "weighings: [{mass: 3 kg}]": "1: weighings: weighings are not available in this version; take the key out for now",
     "decisions: {}": "1: decisions: decisions are not available in this version; take the key out for now",
-    "scan:\n  poses: trusted": "2: scan.poses: poses declared as trusted are not available in this version; "
-    "take the key out for now",
+    "scan: {poses: {a.ply: 1 0 0 0 5 0 0}}": "1: scan.poses.a.ply: '1 0 0 0 5 0 0' has no unit; "
+    "end it with the length unit of the translation, such as mm",
+    "scan: {poses: {a.ply: 2 0 0 0 5 0 0 mm}}": "1: scan.poses.a.ply: a quaternion of length 2; "
+    "w x y z of length 1, before the translation",
+    "scan: {poses: {a.ply: 0 1 0 0 1 0 0 0 0 0 1 0 0 0 0 1 mm}}": "1: scan.poses.a.ply: a matrix that mirrors; "
+    "a rotation: exchange the axes in the scan instead",
+    "scan: {poses: {a.ply: 1 0 0 0 0 1 0 0 0 0 1 0 9 8 7 1 mm}}": "1: scan.poses.a.ply: a matrix written column by "
+    "column; write it row by row: the translation ends rows 1 to 3",
     "scan: mm": "1: scan: 'mm'; "
-    "allowed: a block of keys (unit, frames, up, scale, noise_std, noise_length, certificate)",
+    "allowed: a block of keys (unit, frames, poses, up, scale, noise_std, noise_length, certificate)",
     "clean: [auto]": "1: clean: a list; allowed: a block of keys (support, outliers)",
 }
 
@@ -61,8 +67,7 @@ VALUES = {
     "scan: {unit: MM}": f"1: scan.unit: 'MM' is not a unit that is read here; "
     f"did you mean mm (capitals matter)? {LENGTHS}",
     "scan: {unit: kg}": f"1: scan.unit: 'kg' is a unit of mass, not of length; {LENGTHS}",
-    "scan: {frames: own}": "1: scan.frames: 'own' is not available in this version; allowed: shared",
-    "scan: {frames: sharde}": "1: scan.frames: 'sharde' (did you mean 'shared'?); allowed: shared",
+    "scan: {frames: sharde}": "1: scan.frames: 'sharde' (did you mean 'shared'?); allowed: shared | own",
     "scan: {up: z}": "1: scan.up: 'z' is not a direction; write three bare numbers, like '0 0 1'",
     "scan: {up: [0, 0, 1]}": "1: scan.up: a list; allowed: three bare numbers, such as 0 0 1",
     "scan: {up: 0 0 0}": "1: scan.up: '0 0 0' has no length; write three bare numbers, like '0 0 1'",
