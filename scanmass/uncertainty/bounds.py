@@ -105,7 +105,7 @@ def bound(
     closed = len(shapes)
     for other in model.alternatives:
         if other.beyond:
-            change = on_outer_part(other.change[None], parts)[0]
+            change = on_outer_part(other.far[None], parts)[0]
             moved = {f"{name}, {other.name}": replace(s, moments=s.moments + change) for name, s in shapes.items()}
             shapes |= dict(list(moved.items())[:closed])
 
@@ -259,7 +259,8 @@ def _budget(figures: dict[str, ShapeFigures], closed: int, model: NoiseModel, pa
         masses = np.array([float(f.mass.value) for f in shapes])
         rows += (bracket_row("unseen surface", masses, np.array([f.com.value for f in shapes])),)
     if model.alternatives:
-        changes = np.stack([np.zeros(10), *(a.change for a in model.alternatives if a.beyond or not _any(model))])
+        found = [a.far if a.beyond else a.change for a in model.alternatives if a.beyond or not _any(model)]
+        changes = np.stack([np.zeros(10), *found])
         row = bracket_row(pose_check.SOURCE, *_masses_and_centres(changes, parts))
         rows += (row if _any(model) else replace(row, kind="random"),)
     if model.weightings:

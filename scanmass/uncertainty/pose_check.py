@@ -14,6 +14,7 @@ from scanmass.uncertainty.rigid import RigidFit, effects_of, least_squares, norm
 FloatArray = npt.NDArray[np.float64]
 
 SOURCE = "pose or incidence error common to all views"
+_OUTWARD = 2.0
 _RARE = 0.03
 """Chance that independent errors of the views alone would show as one that they share."""
 
@@ -21,11 +22,13 @@ _RARE = 0.03
 @dataclass(frozen=True)
 class Alternative:
     """The surface if an error common to all views were taken off. ``change`` (10,) of the volume moments about the
-    patches' centre; ``expected`` (10, 10): covariance of it if there is no such error; ``beyond``: chance does not
-    explain it."""
+    patches' centre; ``far`` (10,): the change with its own noise, two standard deviations of the volume outward, where
+    a bracket ends; ``expected`` (10, 10): covariance of the change if there is no such error; ``beyond``: chance does
+    not explain it."""
 
     name: str
     change: FloatArray
+    far: FloatArray
     expected: FloatArray
     beyond: bool
 
@@ -67,13 +70,15 @@ def _alternative(
     change = -to_moments @ solution
     noise = sum(k @ together @ k.T + (k * alone[:, b]) @ k.T for b, k in enumerate(per_view))
     covariance = inverse @ noise @ inverse
+    by_noise = to_moments @ covariance @ to_moments.T
+    outward = np.sign(change[0]) * _OUTWARD * by_noise[:, 0] / np.sqrt(by_noise[0, 0]) if by_noise[0, 0] > 0 else 0.0
     poses = np.zeros(len(normal))
     poses[: 3 * v] = float(rigid.shift_std or 0.0) ** 2
     poses[3 * v : 6 * v] = (float(rigid.turn_std or 0.0) * patches.size) ** 2
     felt = inverse @ normal
     covariance = covariance + (felt * poses) @ felt.T
     expected = to_moments @ covariance @ to_moments.T
-    return Alternative(name, change, expected, _beyond(change, expected, v))
+    return Alternative(name, change, change + outward, expected, _beyond(change, expected, v))
 
 
 def _moments_of(

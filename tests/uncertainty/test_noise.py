@@ -10,7 +10,7 @@ import pytest
 from scipy.spatial.distance import cdist
 
 from scanmass.geometry.moments import monomials
-from scanmass.uncertainty import noise, resample
+from scanmass.uncertainty import noise, resample, weightings
 from scanmass.uncertainty.intervals import coverage_factor, welch_satterthwaite
 from scanmass.uncertainty.patches import Patches
 from scanmass.uncertainty.rigid import fit_rigid
@@ -43,7 +43,9 @@ class Ellipsoid:
         values, vectors = np.linalg.eigh(rho)
         return vectors * np.sqrt(np.clip(values, 0, None))
 
-    def scan(self, rng, views, *, root=None, std=0.0, shift=0.0, turn=0.0, white=0.002, all_round=False, bad=1.0):
+    def scan(
+        self, rng, views, *, root=None, std=0.0, shift=0.0, turn=0.0, white=0.002, all_round=False, bad=1.0, axial=0.0
+    ):
         """Patches with residuals to the surface of the views' means, and the true error of the ten moments."""
         j = len(self.areas)
         square = self.normals @ (_spiral(views) @ np.linalg.qr(rng.normal(size=(3, 3)))[0]).T
@@ -54,6 +56,8 @@ class Ellipsoid:
         error = white * rng.normal(size=(j, views)) / np.sqrt(np.maximum(counts, 1))
         error += self.normals @ (shift * size * rng.normal(size=(3, views)))
         error += np.cross(self.at, self.normals) @ (turn * size * rng.normal(size=(3, views)))
+        # Every range too long by the same: the surface feels it by the cosine of incidence.
+        error -= axial * np.clip(square, 0.0, 1.0)
         if root is not None:
             error += std * root @ rng.normal(size=(j, views))
         samples = np.where(seen, counts, 0.0)
@@ -73,7 +77,7 @@ class Ellipsoid:
             counts=counts,
             samples=samples,
             within=np.where(seen, white**2 * rng.chisquare(degrees) / degrees, np.nan),
-            towards=np.full((j, views), np.nan),
+            towards=square if axial else np.full((j, views), np.nan),
         )
         return found, self.moments.T @ (found.shares() * error).sum(axis=1)
 
@@ -181,3 +185,73 @@ def test_a_view_that_saw_nothing_changes_nothing():
     model = noise.from_views(Patches(**(seen.__dict__ | blind)))
     assert model.views == 5
     assert half_widths(model) == pytest.approx(half_widths(noise.from_views(seen)))
+
+
+@pytest.mark.parametrize("views", [5, 8])
+def test_an_error_that_all_views_share_is_bracketed(views):
+    """All ranges 2 mm too long: halves of the views agree, yet the views fit each other better elsewhere."""
+    rng = np.random.default_rng(12)
+    for _ in range(8):
+        seen, error = BODY.scan(rng, views, root=BODY.root(0.07), std=0.0005, white=0.001, axial=0.002)
+        model = noise.from_views(seen)
+        assert all(a.beyond for a in model.alternatives)
+        assert noise.COMMON_ERROR in [w.code for w in model.warnings]
+        half = half_widths(model)[0]
+        assert abs(error[0]) > half
+        # The truth lies a change of -error away: within the bracket widened by the random part.
+        changes = [0.0, *(a.far[0] for a in model.alternatives)]
+        assert min(changes) - half < -error[0] < max(changes) + half
+
+
+@pytest.mark.parametrize("cell", ["correlated", "exponential and poses"])
+def test_errors_of_single_views_are_not_taken_for_shared_ones(cell):
+    rng = np.random.default_rng(13)
+    found = [noise.from_views(BODY.scan(rng, 6, **CELLS[cell])[0]).alternatives[0] for _ in range(30)]
+    # At 3 % a run, over 4 of 30 come with a chance of 0.2 %.
+    assert sum(a.beyond for a in found) <= 4
+    sizes = np.array([a.change[0] ** 2 / a.expected[0, 0] for a in found])
+    # The expected size is right: the mean of 30 squares of unit deviates, three standard deviations either way.
+    assert 1 - 3 * np.sqrt(2 / 30) < sizes.mean() < 1 + 3 * np.sqrt(2 / 30)
+
+
+def test_bootstraps_agree_where_the_model_is_right():
+    rng = np.random.default_rng(14)
+    models = [noise.from_views(BODY.scan(rng, 8, **CELLS["exponential and poses"])[0]) for _ in range(15)]
+    for drawn, low, high in ((0, 0.8, 1.6), (1, 0.25, 1.1)):
+        ratio = np.median([noise.ratios(m.resampled[drawn], m.parts) for m in models], axis=0)
+        # By views with the leverages of a jackknife: some too large; by patches what is alike over a view is lost.
+        assert low < ratio.min()
+        assert ratio.max() < high
+    assert sum("bootstraps-disagree" in [w.code for w in m.warnings] for m in models) <= 3
+
+
+def test_bends_of_whole_views_show_in_the_second_bootstrap():
+    """Each view bent by 2 mm over its length: no shift, no turn, no field of the lengths the model knows."""
+    rng = np.random.default_rng(15)
+    bend = (BODY.at @ np.array([1.0, 1.0, 0.0])) ** 2
+    ratios = []
+    for _ in range(6):
+        seen, _ = BODY.scan(rng, 6, white=0.0005, all_round=True)
+        seen = replace(seen, residuals=seen.residuals + 0.004 * bend[:, None] * rng.normal(size=6))
+        model = noise.from_views(seen)
+        # The bend is even, so it is the volume that feels it.
+        ratios.append(noise.ratios(model.resampled[0], model.parts)[0])
+        assert "bootstraps-disagree" in [w.code for w in model.warnings]
+        # The floor under the model holds it: the stated doubt of the volume is not below what views show.
+        shown = np.sqrt(resample.covariance(seen)[0, 0])
+        stated = np.sqrt(sum((rows[:, 0] ** 2).sum() for _, rows, _ in model.parts))
+        assert stated > shown / 2
+    assert np.min(ratios) > 4 / 3
+
+
+def test_weights_of_views_alike_change_nothing_where_counts_are_alike():
+    seen, _ = BODY.scan(np.random.default_rng(16), 5, all_round=True)
+    alike = replace(seen, counts=np.full_like(seen.counts, 20.0))
+    assert np.abs(weightings.changes(alike)["views alike"]).max() < 1e-15
+    changed = weightings.changes(seen)
+    assert set(changed) == {"views alike"}
+    share = np.full(seen.residuals.shape, 0.2)
+    want = seen.moments.T @ ((share - seen.shares()) * seen.residuals).sum(axis=1)
+    assert changed["views alike"] == pytest.approx(want)
+    known, _ = BODY.scan(np.random.default_rng(16), 5, axial=1e-9)
+    assert len(weightings.changes(known)) == 4
