@@ -241,15 +241,18 @@ def _budget(document: Document, use: Rulers) -> Iterator[Row]:
     if document["budget"]:
         yield Row("source, random if not named", "mass", "centre of mass")
     for row in sorted(document["budget"], key=lambda row: -max(row["share_mass"] or 0.0, row["share_com"] or 0.0)):
-        ends = row["kind"] == "bracket"
+        checked = wording.only_checked(row)
+        ends = row["kind"] == "bracket" or checked
         mass, centre = (row[key] for key in (_HALVES if ends else _STDS))
         length = None if centre is None else math.hypot(*(centre if isinstance(centre, list) else [centre]))
         on_mass = _doubt(mass, use.mass, row["share_mass"], ends)
         on_centre = _doubt(length, use.length, row["share_com"], ends)
-        yield Row(row["source"] + wording.KINDS[row["kind"]], on_mass, on_centre)
+        yield Row(row["source"] + (", checked" if checked else wording.KINDS[row["kind"]]), on_mass, on_centre)
     for source in dict.fromkeys(row["source"] for row in document["budget"]):
         if source in wording.SOURCES:
             yield Row(f"{source}: {wording.SOURCES[source]}")
+    if any(wording.only_checked(row) for row in document["budget"]):
+        yield Row("checked: no more than chance makes of the doubt above, so it is not added to the bounds")
 
 
 _STDS, _HALVES = ("mass_std_kg", "com_std_m"), ("mass_half_range_kg", "com_half_range_m")

@@ -31,6 +31,7 @@ SOURCES = {
     "scan noise (upper bound)": "all that strays from a coarse surface, true shape and scatter together",
     "view shifts": "how well the views were laid on one another (shifts)",
     "view turns": "how well the views were laid on one another (turns)",
+    "weights of the views (incidence)": "what other weights of grazing and square sight would say",
     "reconstruction": "what fitting a surface through the points may have moved",
     "edges finer than the points": "corners and ridges that fall between the points",
     "scale": "the scanner's lengths as a whole too long or too short",
@@ -165,6 +166,11 @@ def dominant(document: Document, of: str, ruler: Ruler) -> str | None:
     most = max(rows, key=lambda row: float(row[f"share_{of}"]))
     what = "mass" if of == "mass" else "centre of mass"
     return f"Most of the random and declared doubt of the {what}: {most['source']} ({share(most[f'share_{of}'])})."
+
+
+def only_checked(row: Document) -> bool:
+    """A row of the budget that a check found, within chance: half ranges, and nothing of the bounds."""
+    return row["kind"] == "random" and row["com_std_m"] is None and row["com_half_range_m"] is not None
 
 
 def bracket_leads(document: Document) -> str | None:

@@ -103,6 +103,7 @@ def from_views(patches: Patches, seed: int = 0) -> NoiseModel:
         for name, covariance, nu in zip(names, covariances, degrees, strict=True)
     )
     others = alternatives(patches, rigid, *_of_one_view(patches, own_field))
+    weighed = weightings.changes(patches)
     drawn = resample.by_views(patches, _DRAWS, seed), resample.by_patches(patches, own_field.length, _DRAWS, seed)
     return NoiseModel(
         "views",
@@ -114,7 +115,7 @@ def from_views(patches: Patches, seed: int = 0) -> NoiseModel:
         views=v,
         parts=parts,
         alternatives=others,
-        weightings=weightings.changes(patches),
+        weightings=weighed,
         resampled=drawn,
         assumptions=(
             Note(
@@ -123,7 +124,7 @@ def from_views(patches: Patches, seed: int = 0) -> NoiseModel:
                 "offset of the surface, a common pose error) does not show in it and counts only where declared.",
             ),
         ),
-        warnings=_common_error(others) + _unlike(drawn[0], parts, stretch, v),
+        warnings=_common_error(others) + _by_weights(weighed, parts) + _unlike(drawn[0], parts, stretch, v),
     )
 
 
@@ -183,6 +184,22 @@ def _common_error(others: Sequence[Alternative]) -> tuple[Note, ...]:
         "from one to the other. One known length on the object, or a weighing, settles it."
     )
     return (Note(COMMON_ERROR, text),)
+
+
+def _by_weights(
+    weighed: dict[str, FloatArray], parts: Sequence[tuple[str, FloatArray, float | None]]
+) -> tuple[Note, ...]:
+    """Other weights of grazing and square sight that say more than the random half-width, about two deviations."""
+    spread = weightings.half_spread(weighed)[:4]
+    half = 2.0 * np.sqrt(np.sum([(rows[:, :4] ** 2).sum(axis=0) for _, rows, _ in parts], axis=0))
+    if not (spread > half).any():
+        return ()
+    text = (
+        "Volume or centre of mass change by more than the random half-width when grazing sight counts for less or "
+        f"more (volume by up to {1e6 * spread[0]:.3g} cm3): something goes wrong where the scanner looks along the "
+        "surface. Scan such places squarely as well."
+    )
+    return (Note("grazing-sight-decides", text),)
 
 
 def ratios(drawn: FloatArray, parts: Sequence[tuple[str, FloatArray, float | None]]) -> FloatArray:

@@ -255,3 +255,13 @@ def test_weights_of_views_alike_change_nothing_where_counts_are_alike():
     assert changed["views alike"] == pytest.approx(want)
     known, _ = BODY.scan(np.random.default_rng(16), 5, axial=1e-9)
     assert len(weightings.changes(known)) == 4
+
+
+def test_grazing_sight_that_decides_is_said():
+    """Every view reads 3 mm too far where it looks along the surface: weights decide, not noise."""
+    rng = np.random.default_rng(17)
+    seen, _ = BODY.scan(rng, 6, white=0.0003, axial=1e-9)
+    grazing = np.where(seen.towards < 0.5, 0.003, 0.0)
+    leaning = replace(seen, residuals=seen.residuals + grazing)
+    assert "grazing-sight-decides" in [w.code for w in noise.from_views(leaning).warnings]
+    assert "grazing-sight-decides" not in [w.code for w in noise.from_views(seen).warnings]
