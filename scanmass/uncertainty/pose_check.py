@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
 from scipy.stats import t as student
 
 from scanmass.uncertainty.patches import Patches
-from scanmass.uncertainty.rigid import RigidFit, effects_of, least_squares, normal_equations
+from scanmass.uncertainty.rigid import RigidFit, effects_of, least_squares, normal_equations, shrunk
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -72,12 +72,21 @@ def _alternative(
     covariance = inverse @ noise @ inverse
     by_noise = to_moments @ covariance @ to_moments.T
     outward = np.sign(change[0]) * _OUTWARD * by_noise[:, 0] / np.sqrt(by_noise[0, 0]) if by_noise[0, 0] > 0 else 0.0
-    poses = np.zeros(len(normal))
-    poses[: 3 * v] = float(rigid.shift_std or 0.0) ** 2
-    poses[3 * v : 6 * v] = (float(rigid.turn_std or 0.0) * patches.size) ** 2
     felt = inverse @ normal
-    covariance = covariance + (felt * poses) @ felt.T
-    expected = to_moments @ covariance @ to_moments.T
+
+    def with_poses(fit: RigidFit) -> FloatArray:
+        poses = np.zeros(len(normal))
+        poses[: 3 * v] = float(fit.shift_std or 0.0) ** 2
+        poses[3 * v : 6 * v] = (float(fit.turn_std or 0.0) * patches.size) ** 2
+        return covariance + (felt * poses) @ felt.T
+
+    # An error that all views share feigns motions of single views: how large those are is asked without the part of
+    # the solution that changes the volume.
+    cause = with_poses(rigid) @ to_moments[0]
+    shared = cause * (to_moments[0] @ solution) / (to_moments[0] @ cause)
+    motions, lean = (shared[:-1], float(shared[-1])) if with_incidence else (shared, 0.0)
+    rest = replace(patches, residuals=patches.residuals - effects_of(patches, used, motions, lean))
+    expected = to_moments @ with_poses(shrunk(rest, rigid, together, alone)) @ to_moments.T
     return Alternative(name, change, change + outward, expected, _beyond(change, expected, v))
 
 
@@ -92,5 +101,5 @@ def _moments_of(
 
 
 def _beyond(change: FloatArray, expected: FloatArray, views: int) -> bool:
-    reach = student.ppf(1.0 - 0.5 * _RARE / 4, 3.0 * (views - 1.0)) * np.sqrt(np.diag(expected)[:4])
+    reach = student.ppf(1.0 - 0.5 * _RARE / 4, 3.0 * (views - 1.0) - 1.0) * np.sqrt(np.diag(expected)[:4])
     return bool(np.any(np.abs(change[:4]) > reach))

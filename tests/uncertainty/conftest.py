@@ -2,6 +2,7 @@
 
 import numpy as np
 import pytest
+from threadpoolctl import threadpool_limits
 
 from scanmass.cloud.cloud import Cloud
 from scanmass.surface.surface import Surface
@@ -51,3 +52,10 @@ def cloud_of():
 @pytest.fixture
 def on_sphere():
     return _on_sphere
+
+
+@pytest.fixture(autouse=True)
+def one_thread():
+    """As in a measurement: small matrices wait for each other when threads share them."""
+    with threadpool_limits(1):
+        yield
