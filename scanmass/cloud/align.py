@@ -21,18 +21,23 @@ from scanmass.progress import Progress, silent
 
 FloatArray = npt.NDArray[np.float64]
 
-LEAST_OVERLAP = 0.06
-"""Share of the smaller view's samples on another's surface below which two views do not hold each other."""
-MOST_AGAINST, TELLING = 0.04, 400
-"""Contradicting samples, as a share, above which a pair is refused, where at least so many samples tell."""
-RIVAL, RIVAL_FLOOR = 1.4, 0.0012
+LEAST_OVERLAP, LISTED = 0.1, 0.05
+"""Share of the smaller view's samples on another's surface below which two views do not hold each other, and from which
+they are listed."""
+MOST_AGAINST, CHANCE = 0.04, 15
+"""Contradicting samples, as a share and a number beyond it, above which a pair is refused."""
+RIVAL, RIVAL_FLOOR = 1.4, 0.0006
 """Another way to bring the views together is as good where less than this many times as much, and this share of the
 samples more, speaks against it."""
+FARTHER = 1.12
+"""Another way is not as good where samples that agree lie this many times as far apart, all pairs together."""
+ANOTHER = 5.0
+"""Slack within which ways are one and the same that was settled more or less well: 10 degrees, 6 % of the size."""
 BETTER = 3
 """Times that a better way among the rivals is taken up."""
 NOISES, LEAST_TOLERANCE = 5.0, 0.001
 """Tolerance of one surface: noises of a sample, but at least this share of the size."""
-LOOSE, TOO_LOOSE = 0.001, 0.01
+LOOSE, TOO_LOOSE = 0.001, 0.005
 """Doubt of the least held motion, in sizes, that is warned of, and that is refused."""
 WORDS = "pairs of oriented points, then point to plane over all pairs at once"
 
@@ -93,13 +98,16 @@ def align(views: Sequence[ViewSamples], progress: Progress = silent) -> Alignmen
         raise _not_placed(views, found, ways, scale)
     settled = _distinct([settle(views, way.poses, scale, rounds=10, stride=3) for way in whole], views, scale)
     ranked = sorted(((speaks_against(views, poses, scale), k) for k, poses in enumerate(settled)))
-    poses, others = settled[ranked[0][1]], [settled[k] for _, k in ranked[1:]]
+    against, first = ranked[0]
+    poses, others = settled[first], [settled[k] for _, k in ranked[1:]]
     for _ in range(BETTER):
-        others += rivals(views, found, poses, scale)
+        new = rivals(views, found, poses, scale)
         others.append(poses)
-        poses = min(others, key=lambda way: speaks_against(views, way, scale))
-        if poses is others[-1]:
+        others += new
+        shares = [speaks_against(views, way, scale) for way in new]
+        if not new or min(shares) >= against:
             break
+        against, poses = min(shares), new[int(np.argmin(shares))]
     poses = settle(views, poses, scale, rounds=40)
     root = inverse(poses[0])
     poses = {v: root @ pose for v, pose in poses.items()}
@@ -117,13 +125,19 @@ def align(views: Sequence[ViewSamples], progress: Progress = silent) -> Alignmen
 
 
 def speaks_against(views: list[ViewSamples], poses: dict[int, FloatArray], scale: Scale) -> float:
-    """Share of the samples that tell, over all pairs, that contradict ``poses``."""
-    matched, against = 0, 0
+    """Share of the samples that tell, over all pairs, that contradict ``poses``; every second one is asked."""
+    return _told(views, poses, scale)[0]
+
+
+def _told(views: list[ViewSamples], poses: dict[int, FloatArray], scale: Scale) -> tuple[float, float]:
+    """The share of the samples that contradict, and the root mean square of the heights of the rest, in metres."""
+    matched, against, squares = 0, 0, 0.0
     for i, j in combinations(sorted(poses), 2):
-        met = fit(views[i], views[j], inverse(poses[i]) @ poses[j], scale.tolerance, scale.reach)
-        matched += met.matched + met.against
+        met = fit(views[i], views[j], inverse(poses[i]) @ poses[j], scale.tolerance, scale.reach, 2)
+        matched += met.matched
         against += met.against + met.through
-    return against / max(matched, 1)
+        squares += met.matched * met.rms**2
+    return against / max(matched, 1), float(np.sqrt(squares / max(matched, 1)))
 
 
 def _distinct(ways: list[dict[int, FloatArray]], views: list[ViewSamples], scale: Scale) -> list[dict[int, FloatArray]]:
@@ -147,7 +161,7 @@ def checked(views: list[ViewSamples], poses: dict[int, FloatArray], scale: Scale
         for i, j in combinations(sorted(poses), 2)
     }
     for (i, j), found in fits.items():
-        if found.matched + found.against + found.through >= TELLING and found.contradiction > MOST_AGAINST:
+        if found.against + found.through > MOST_AGAINST * (found.matched + found.against) + CHANCE:
             raise Declined(
                 f"the views {views[i].name} and {views[j].name} contradict each other: where both looked, "
                 f"{100 * found.contradiction:.0f} % of the points of one lie where the other saw its surface elsewhere "
@@ -217,13 +231,16 @@ def _refuse_rival(
     views: list[ViewSamples], poses: dict[int, FloatArray], others: list[dict[int, FloatArray]], scale: Scale
 ) -> None:
     """Refuse where the views come together in another way about as well."""
-    limit = RIVAL * speaks_against(views, poses, scale) + RIVAL_FLOOR
+    against, rms = _told(views, poses, scale)
     for other in others:
-        if same_way(poses, other, views, scale) or speaks_against(views, other, scale) > limit:
+        if same_way(poses, other, views, scale, ANOTHER):
+            continue
+        theirs, their_rms = _told(views, other, scale)
+        if theirs > RIVAL * against + RIVAL_FLOOR or their_rms > FARTHER * rms:
             continue
         for i, j in combinations(sorted(poses), 2):
             a, b = inverse(poses[i]) @ poses[j], inverse(other[i]) @ other[j]
-            if not alike(a, b, views[j], 2.0 * scale.size):
+            if not alike(a, b, views[j], scale.size, ANOTHER):
                 cosine = 0.5 * (np.trace((inverse(a) @ b)[:3, :3]) - 1.0)
                 raise Declined(
                     f"the views {views[i].name} and {views[j].name} fit in two ways, "
@@ -260,7 +277,7 @@ def measured(views: list[ViewSamples], poses: dict[int, FloatArray], scale: Scal
     for i, j in combinations(sorted(poses), 2):
         pose = inverse(poses[i]) @ poses[j]
         found = fit(views[i], views[j], pose, scale.tolerance, scale.reach)
-        if found.overlap < LEAST_OVERLAP:
+        if found.overlap < LISTED:
             continue
         alone = refined(views[i], views[j], pose, np.full(6, 2.0 * scale.tolerance), views[j].asked)
         between = inverse(pose) @ alone

@@ -64,7 +64,7 @@ def _clearest(found: list[Candidate], views: list[ViewSamples], scale: Scale) ->
     leads = []
     for pair in dict.fromkeys((c.one, c.other) for c in found):
         own = sorted((c for c in found if (c.one, c.other) == pair), key=lambda c: -c.score)
-        others = [c.score for c in own[1:] if not alike(c.pose, own[0].pose, views[pair[1]], 2.0 * scale.size)]
+        others = [c.score for c in own[1:] if not alike(c.pose, own[0].pose, views[pair[1]], scale.size, 2.0)]
         leads.append((own[0].score - max([0.0, *others]), own[0]))
     leads.sort(key=lambda entry: -entry[0])
     return [candidate for _, candidate in leads]
@@ -80,7 +80,7 @@ def _longer(views: list[ViewSamples], found: list[Candidate], way: Assembly, sca
         tried: list[FloatArray] = []
         for edge in edges:
             pose = way.poses[edge.one] @ edge.pose
-            if len(tried) < TRIED and not any(alike(pose, o, views[view], 2.0 * scale.size) for o in tried):
+            if len(tried) < TRIED and not any(alike(pose, o, views[view], scale.size, 2.0) for o in tried):
                 tried.append(pose)
         scored = [(support(views, way.poses, view, pose, scale), k) for k, pose in enumerate(tried)]
         scored = sorted((entry for entry in scored if entry[0] > 0.0), key=lambda entry: -entry[0])
@@ -101,9 +101,11 @@ def support(views: list[ViewSamples], poses: dict[int, FloatArray], view: int, p
     return total
 
 
-def same_way(a: dict[int, FloatArray], b: dict[int, FloatArray], views: list[ViewSamples], scale: Scale) -> bool:
+def same_way(
+    a: dict[int, FloatArray], b: dict[int, FloatArray], views: list[ViewSamples], scale: Scale, slack: float = 2.0
+) -> bool:
     """Whether two ways place the same views alike."""
     if a.keys() != b.keys():
         return False
     root = min(a)
-    return all(alike(inverse(a[root]) @ a[v], inverse(b[root]) @ b[v], views[v], 2.0 * scale.size) for v in a)
+    return all(alike(inverse(a[root]) @ a[v], inverse(b[root]) @ b[v], views[v], scale.size, slack) for v in a)

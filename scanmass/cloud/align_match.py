@@ -68,7 +68,7 @@ def score_of(found: Fit, one: ViewSamples, other: ViewSamples, stride: int = 1) 
 
 def candidates(views: list[ViewSamples], one: int, other: int, scale: Scale) -> list[Candidate]:
     """The poses of ``other`` on ``one`` that may be right, the best first, at most six."""
-    target, moving = views[one], views[other]
+    target, moving = views[one].sketch(), views[other].sketch()
     leaf = scale.leaf
     few = moving.asked[:: max(1, len(moving.asked) // 400)]
     stride = max(1, len(moving.asked) // 500)
@@ -85,6 +85,7 @@ def candidates(views: list[ViewSamples], one: int, other: int, scale: Scale) -> 
         rough.append((score_of(found, target, moving, stride), laid))
     rough.sort(key=lambda entry: -entry[0])
     result: list[Candidate] = []
+    target, moving = views[one], views[other]
     for pose in _distinct([pose for _, pose in rough], moving, scale.size)[:REFINED]:
         laid = refined(target, moving, pose, np.geomspace(0.5 * leaf, 1.5 * scale.tolerance, 7), moving.asked[::2])
         found = fit(target, moving, laid, scale.tolerance, scale.reach)
@@ -101,10 +102,10 @@ def _distinct(poses: list[FloatArray], moving: ViewSamples, size: float) -> list
     return kept
 
 
-def alike(pose: FloatArray, other: FloatArray, moving: ViewSamples, size: float) -> bool:
-    """Whether two poses (4, 4) of a view are one and the same."""
+def alike(pose: FloatArray, other: FloatArray, moving: ViewSamples, size: float, slack: float = 1.0) -> bool:
+    """Whether two poses (4, 4) of a view are one and the same, or with more ``slack`` nearly so."""
     between = inverse(pose) @ other
     turn = float(np.arccos(np.clip(0.5 * (np.trace(between[:3, :3]) - 1.0), -1.0, 1.0)))
-    middle = moving.points.mean(axis=0)
+    middle = moving.middle
     shift = float(np.linalg.norm(between[:3, :3] @ middle + between[:3, 3] - middle))
-    return turn < SAME_TURN and shift < SAME_SHIFT * size
+    return turn < slack * SAME_TURN and shift < slack * SAME_SHIFT * size

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Set
 from itertools import combinations
 
 import numpy as np
@@ -18,11 +18,13 @@ from scanmass.cloud.align_samples import ViewSamples
 FloatArray = npt.NDArray[np.float64]
 
 STRIDE = 6
-LOOSE = 0.02
+LOOSE = 0.06
 """Contradicting share above which a way is not looked at more closely."""
-MOST = 6
+MOST = 10
 """Ways that are looked at closely."""
-LEAST_OVERLAP = 0.1
+AS_MUCH, LEAST_SHARED = 0.5, 30
+"""A way that lays less of a part on the rest, as a share of what this one does, or so few samples, is no rival."""
+LEAST_OVERLAP = 0.05
 
 
 def rivals(
@@ -34,37 +36,39 @@ def rivals(
     moved as a whole so that the two come to lie in that pose.
     """
     seen: list[tuple[float, dict[int, FloatArray]]] = []
+    cuts = _cuts(views, poses, scale)
     for candidate in found:
         i, j = candidate.one, candidate.other
-        if candidate.score <= 0.0 or candidate.fit.overlap < LEAST_OVERLAP:
+        if candidate.fit.contradiction > LOOSE or candidate.fit.overlap < LEAST_OVERLAP:
             continue
-        if alike(inverse(poses[i]) @ poses[j], candidate.pose, views[j], 2.0 * scale.size):
+        if alike(inverse(poses[i]) @ poses[j], candidate.pose, views[j], scale.size, 2.0):
             continue
         move = poses[i] @ candidate.pose @ inverse(poses[j])
-        for part in _parts(views, poses, i, j, scale):
-            share = _across(views, poses, part, move, scale)
-            if share < LOOSE:
+        for part in (side if j in side else poses.keys() - side for side in cuts):
+            if i in part:
+                continue
+            matched, share = _across(views, poses, part, move, scale)
+            if share < LOOSE and matched >= AS_MUCH * _across(views, poses, part, np.eye(4), scale)[0]:
                 seen.append((share, {v: move @ p if v in part else p for v, p in poses.items()}))
     seen.sort(key=lambda entry: entry[0])
     return [settle(views, way, scale, rounds=6, stride=3) for _, way in seen[:MOST]]
 
 
-def _parts(
-    views: list[ViewSamples], poses: dict[int, FloatArray], i: int, j: int, scale: Scale
-) -> Iterator[frozenset[int]]:
-    """The views that hang on view ``j`` once a link of the chain of best overlaps from ``i`` to ``j`` is cut."""
+def _cuts(views: list[ViewSamples], poses: dict[int, FloatArray], scale: Scale) -> list[frozenset[int]]:
+    """The views on one side of each link of the tree of best overlaps, when that link is cut."""
     n = len(views)
     links = [(a, b, _link(views, poses, a, b, scale)) for a, b in combinations(range(n), 2)]
     links = [link for link in links if link[2] > 0]
+    if not links:
+        return []
     rows, columns, matched = zip(*links, strict=True)
     tree = minimum_spanning_tree(coo_matrix((1.0 / np.array(matched, float), (rows, columns)), shape=(n, n)).tocsr())
-    edges = list(zip(*tree.nonzero(), strict=True))
-    for a, b in edges:
+    sides = []
+    for a, b in zip(*tree.nonzero(), strict=True):
         left = tree.copy().tolil()
         left[a, b] = 0.0
-        part = frozenset(int(v) for v in breadth_first_order(left.tocsr(), j, directed=False)[0])
-        if i not in part:
-            yield part
+        sides.append(frozenset(int(v) for v in breadth_first_order(left.tocsr(), b, directed=False)[0]))
+    return sides
 
 
 def _link(views: list[ViewSamples], poses: dict[int, FloatArray], a: int, b: int, scale: Scale) -> int:
@@ -72,15 +76,14 @@ def _link(views: list[ViewSamples], poses: dict[int, FloatArray], a: int, b: int
 
 
 def _across(
-    views: list[ViewSamples], poses: dict[int, FloatArray], part: frozenset[int], move: FloatArray, scale: Scale
-) -> float:
-    """What speaks against the pairs between a moved part and the rest, as a share; 1 where they do not overlap."""
+    views: list[ViewSamples], poses: dict[int, FloatArray], part: Set[int], move: FloatArray, scale: Scale
+) -> tuple[int, float]:
+    """Samples on one surface between a moved part and the rest, and what speaks against it as a share."""
     matched, against = 0, 0
     for a in poses.keys() - part:
         for b in part:
-            met = fit(
-                views[a], views[b], inverse(poses[a]) @ move @ poses[b], 2.0 * scale.tolerance, scale.reach, STRIDE
-            )
-            matched += met.matched + met.against
+            pose = inverse(poses[a]) @ move @ poses[b]
+            met = fit(views[a], views[b], pose, 2.0 * scale.tolerance, scale.reach, STRIDE)
+            matched += met.matched
             against += met.against + met.through
-    return against / matched if matched >= 40 else 1.0
+    return matched, against / matched if matched >= LEAST_SHARED else 1.0

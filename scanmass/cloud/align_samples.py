@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from functools import cached_property
 
 import numpy as np
 import numpy.typing as npt
@@ -27,14 +28,16 @@ LEAF = 0.045
 """Edge of the coarse cells over the size of the views."""
 _ONE_SIDED = 0.35
 """Neighbours whose middle lies off a sample by more than this share of their reach are all on one side: a border."""
+_CRISP = 0.8
+"""Cosine to a neighbour's normal below which a sample is at an edge, or a mixed pixel: no word on what lies there."""
 
 
 @dataclass(frozen=True)
 class ViewSamples:
     """Samples of one view in metres: ``points``, ``normals`` (n, 3) outward as far as can be told.
 
-    ``border`` (n,): at the border of what the view saw; ``asked``, ``coarse``: (k,) numbers of the samples that are
-    looked up in other views, and (c, 6) places and normals of the cells that poses are voted with.
+    ``border`` (n,): at the border of what the view saw, or at an edge; ``asked`` (k,): numbers of the samples that are
+    looked up in others; ``coarse`` (c, 6): places and normals of the cells that poses are voted with.
     ``certain``: whether the side of the normals is known; ``noise``: m, median deviation off local planes;
     ``sight``: what its scanner looked through, None where its place is not known and cannot be told.
     """
@@ -51,27 +54,31 @@ class ViewSamples:
     sight: Sight | None
     tree: cKDTree
 
+    @cached_property
+    def middle(self) -> FloatArray:
+        """Mean of the samples (3,)."""
+        mean: FloatArray = self.points.mean(axis=0)
+        return mean
+
     @property
     def size(self) -> float:
         """Diagonal of the box along the principal axes of the samples, which does not change with the frame."""
         return principal_size(self.points)
 
-    def moved(self, pose: FloatArray) -> ViewSamples:
-        """The view with ``pose`` (4, 4) applied: p' = R p + t."""
-        r, t = pose[:3, :3], pose[:3, 3]
-        points = self.points @ r.T + t
+    def sketch(self) -> ViewSamples:
+        """The view by the samples alone that are looked up in others: enough for a rough look, and quicker."""
+        n = len(self.asked)
+        wider = self.spacing * float(np.sqrt(len(self.points) / max(n, 1)))
+        points = self.points[self.asked]
         return replace(
             self,
             points=points,
-            normals=self.normals @ r.T,
-            coarse=np.concatenate([self.coarse[:, :3] @ r.T + t, self.coarse[:, 3:] @ r.T], axis=1),
-            sight=None if self.sight is None else self.sight.moved(pose),
+            normals=self.normals[self.asked],
+            border=np.zeros(n, np.bool_),
+            asked=np.arange(n),
+            spacing=wider,
             tree=cKDTree(points),
         )
-
-    def flipped(self) -> ViewSamples:
-        """The view with its normals on the other side."""
-        return replace(self, normals=-self.normals, coarse=self.coarse * np.repeat([1.0, -1.0], 3))
 
 
 def principal_size(points: FloatArray) -> float:
@@ -114,6 +121,8 @@ def view_samples(
     near = raw.index[:, :12]
     reach = raw.distance[:, : near.shape[1]].mean(axis=1)
     border = np.linalg.norm(fewer[near].mean(axis=1) - fewer, axis=1) > _ONE_SIDED * reach
+    beside = np.abs(np.einsum("nij,nj->ni", normals[near[:, :8]], normals)).min(axis=1)
+    border |= beside < _CRISP
     seen = None if eye is None else sight(fewer, eye, spacing, 1)
     coarse = _coarse(fewer, normals, LEAF * size)
     inner = asked[~border[asked]]

@@ -47,11 +47,6 @@ class Sight:
         front: BoolArray = judged & (np.linalg.norm(local, axis=1) < np.where(judged, limit, 0.0) - margin)
         return front
 
-    def moved(self, pose: FloatArray) -> Sight:
-        """The same with ``pose`` (4, 4) applied."""
-        turn = pose[:3, :3]
-        return Sight(turn @ self.eye + pose[:3, 3], self.axes @ turn.T, self.nearest, self.pixel, self.low)
-
 
 def sight(points: FloatArray, eye: FloatArray, spacing: float, around: int) -> Sight:
     """The sight of an ``eye`` (3,) that saw points (n, 3); ranges are the least within ``around`` pixels each way."""

@@ -33,6 +33,7 @@ NO_FIT = (
     "contradict each other",
     "fit in two ways",
     "can slide on each other",
+    "overlap in ",
 )
 """What is seen of views that do not belong together depends on their shapes."""
 
@@ -128,7 +129,7 @@ def test_own_frames_end_where_shared_ones_do(
         np.testing.assert_allclose(centre["value"], true[1:4] / true[0], atol=4e-4)
     pairs = own["views"]["pairs"]
     assert {(p["first"], p["second"]) for p in pairs} >= {("v0.ply", "v1.ply")}
-    assert all(0.06 <= p["overlap"] <= 1.0 and p["rms_m"] < 2e-4 for p in pairs)
+    assert all(0.05 <= p["overlap"] <= 1.0 and p["rms_m"] < 2e-4 for p in pairs)
     scan = next(section for section in rows(own.document) if section.title == "Measured: the scan")
     said = next(row.remark for row in scan.rows if row.label == "views")
     assert said.startswith(f"aligned to the first; {len(pairs)} pairs overlap, at most ")
