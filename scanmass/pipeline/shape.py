@@ -135,7 +135,8 @@ def _of_points(scans: Sequence[Scan], settings: Pipeline, seed: int, progress: P
         hollow_depth=settings.surface.hollow_depth,
         up=found.up,
         contact_height=found.contact_height,
-        floor_samples=_of_support(found.removed),
+        floor_samples=_removed_as(found.removed, "support plane", "turntable"),
+        edge_samples=_removed_as(removed, "grid edge"),
         progress=progress,
     )
     return _finished(
@@ -171,9 +172,9 @@ def _finer(scans: Sequence[Scan], thinned: Thinned, found: Separated, origin: Fl
     return again.keep(np.isfinite(distance))
 
 
-def _of_support(removed: Removed) -> FloatArray:
-    """The samples (k, 3) of what the object stood on."""
-    kinds = [REASONS.index("support plane"), REASONS.index("turntable")]
+def _removed_as(removed: Removed, *reasons: str) -> FloatArray:
+    """The samples (k, 3) taken away for any of ``reasons``."""
+    kinds = [REASONS.index(reason) for reason in reasons]
     return removed.points[np.isin(removed.reason, kinds)]
 
 

@@ -19,6 +19,7 @@ from scanmass.surface.columns import swept_volume
 from scanmass.surface.coverage import gaps, inferred_faces, seen_vertices
 from scanmass.surface.mesh import FloatArray, Mesh
 from scanmass.surface.onesided import require_all_round
+from scanmass.surface.sight import Sights
 from scanmass.surface.span import Mask, Span, membrane, seen_normals, tangent_cone
 from scanmass.surface.standing import standing
 from scanmass.surface.surface import Surface, Underside
@@ -42,6 +43,7 @@ def close(
     up: FloatArray | None = None,
     contact_height: float | None = None,
     floor_samples: FloatArray | None = None,
+    edge_samples: FloatArray | None = None,
     progress: Progress = silent,
 ) -> Surface:
     """The reconstructed mesh with what no sample supports replaced by a declared or bracketed closure.
@@ -54,6 +56,8 @@ def close(
     up : (3,), unit, or None
     contact_height : ``up . r`` of the contact plane in metres; from the lowest samples where None
     floor_samples : (k, 3) of the support the object stands on: above what was seen of it nothing reaches down to it
+    edge_samples : (k, 3) that cleaning took away at edges of range grids: where no support was found they tell how far
+        down the object reaches
 
     Raises
     ------
@@ -66,7 +70,10 @@ def close(
     distance, pitch = seen_vertices(mesh, cloud)
     notes: list[Note] = []
     spacing = float(np.median(pitch))
-    base = standing_base(underside, hollow_depth, up, contact_height, cloud.points, spacing, notes, floor_samples)
+    base = standing_base(
+        underside, hollow_depth, up, contact_height, cloud.points, spacing, notes, floor_samples, edge_samples
+    )
+    base = replace(base, sights=Sights.of(cloud))
     require_all_round(mesh, inferred_faces(mesh, distance), up, base.level)
     progress("close", 1, 3)
     inferred, regions = _missed(mesh, cloud, base)

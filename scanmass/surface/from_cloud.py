@@ -24,6 +24,7 @@ def surface_from_cloud(
     up: FloatArray | None = None,
     contact_height: float | None = None,
     floor_samples: FloatArray | None = None,
+    edge_samples: FloatArray | None = None,
     progress: Progress = silent,
 ) -> Surface:
     """Reconstruct, refine, close and check; see each for what it does, needs and raises."""
@@ -38,6 +39,7 @@ def surface_from_cloud(
         up=up,
         contact_height=contact_height,
         floor_samples=floor_samples,
+        edge_samples=edge_samples,
         progress=progress,
     )
     # What refinement still changed after its first round, apart from what closing put in place of the unseen.

@@ -12,6 +12,7 @@ from scipy.spatial import cKDTree
 from scanmass.geometry.harmonic import harmonic, neighbour_matrix
 from scanmass.geometry.loops import area_vector, rim_edges
 from scanmass.geometry.planes import plane_axes
+from scanmass.surface.level import UNSURE_END
 from scanmass.surface.mesh import FloatArray, Mesh
 from scanmass.surface.refine import vertex_normals
 
@@ -26,8 +27,6 @@ LEVELLED = 0.5
 SMOOTHING = 5
 CONVERGING = 0.3
 STEEPEST_CONE = 2.0
-UNSURE_END = 0.5
-"""Where samples end is known to so many pitches."""
 UNEVEN = 4.0
 """A rim is level when its heights lie within so many pitches: of each end it is known to the two by which gaps are
 widened (``coverage.WIDEN``)."""

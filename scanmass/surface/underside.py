@@ -9,9 +9,10 @@ from scanmass.errors import Declined, Note
 from scanmass.geometry.planes import plane_axes
 from scanmass.geometry.polyhedron import face_areas
 from scanmass.surface.base import Base
-from scanmass.surface.level import standing_level
+from scanmass.surface.level import UNSURE_END, standing_level
 from scanmass.surface.mesh import FloatArray, Mesh
-from scanmass.surface.span import UNSURE_END, Mask, Span, converges, corners, floor, low_membrane, tangent_cone
+from scanmass.surface.sight import ends_in_sight
+from scanmass.surface.span import Mask, Span, converges, corners, floor, low_membrane, tangent_cone
 from scanmass.surface.standing import resting_plane
 from scanmass.surface.whereabouts import whereabouts
 
@@ -38,7 +39,10 @@ def underside_span(mesh: Mesh, region: Mask, base: Base, normals: FloatArray, no
     # Walls go on below their lowest samples by some of the spacing; a support, or a mesh, ends where it ends.
     lowest -= 0.0 if base.supported else UNSURE_END * base.pitch
     far, _ = _down(mesh, region, base, normals, near, up, lowest, inward=False)
-    lid = tangent_cone(mesh, region, normals) if not base.supported and converges(mesh, region, up) else None
+    # ... and a surface that turned out of sight may go on, but not a wall that was in full sight where it ends.
+    open_below = not base.supported and converges(mesh, region, up)
+    open_below = open_below and not ends_in_sight(mesh, region, normals, up, base.sights)
+    lid = tangent_cone(mesh, region, normals) if open_below else None
     if lid is not None:
         lid = np.where((lid @ up < far @ up)[:, None], lid, far)
     notes.append(_unknown_note(mesh, region, near, lid is not None))
@@ -53,7 +57,8 @@ def _unknown_note(mesh: Mesh, region: Mask, near: FloatArray, narrows: bool) -> 
     )
     if narrows:
         text += (
-            "; the surface narrows at the rim and no support was found, so it may also close below the lowest points"
+            "; the surface turns out of sight at the rim and no support was found, so it may also close below the "
+            "lowest points"
         )
     return Note("nothing-recessed-above-rim", text)
 
@@ -78,13 +83,25 @@ def _declared(
     """Flat, or raised by the declared depth, where the object can stand; bracketed where the floor below was seen."""
     far, hangs = _down(mesh, region, base, normals, near, up, level, inward=True)
     inside, _ = corners(mesh, region)
+    recess = np.zeros((len(far), 1))
     if base.underside == "hollow":
-        far[inside & ~hangs] += _depth(mesh, base, up, level, notes) * up
+        recess[inside & ~hangs] = _depth(mesh, base, up, level, notes)
+    far = far + recess * up
     text = (
         f"the underside ({_share(mesh, region, near)}) was not seen, and is closed {base.underside} as declared: on "
         "feet or runners that hide what is between them the object weighs less"
     )
+    foot = base.foot
+    if foot is not None:
+        text += (
+            f"; where it ends is told by samples alone, to {1000 * (foot.highest - foot.lowest):.2g} mm: both ends are "
+            "in the bracket"
+        )
     notes.append(Note("underside-as-declared", text))
+    if foot is not None:
+        ends = [floor(mesh, region, normals, up, z, inward=True) + recess * up for z in (foot.highest, foot.lowest)]
+        share = (foot.highest - foot.level) / (foot.highest - foot.lowest)
+        return Span(region, ends[0], ends[1], share, True, "underside")
     if not hangs[inside].any():
         return Span(region, near, far, 1.0, False, "underside")
     spanned, _ = face_areas(near, mesh.faces[region])
