@@ -13,7 +13,7 @@ from scanmass.cloud.align_fit import Fit, fit, inverse, refined
 from scanmass.cloud.align_grow import Assembly, assemblies, same_way
 from scanmass.cloud.align_hold import Free, free_motions, looseness
 from scanmass.cloud.align_joint import joint_equations, settle
-from scanmass.cloud.align_match import Candidate, Scale, alike, candidates
+from scanmass.cloud.align_match import Candidate, Scale, candidates
 from scanmass.cloud.align_rivals import rivals
 from scanmass.cloud.align_samples import ViewSamples
 from scanmass.errors import Declined, Note
@@ -209,14 +209,14 @@ def _refuse_apart(views: list[ViewSamples], fits: dict[tuple[int, int], Fit]) ->
         for (i, j), found in fits.items():
             if found.overlap >= LEAST_OVERLAP and (i in together) != (j in together):
                 together |= {i, j}
-    for v in range(len(views)):
-        if v not in together:
-            (i, j), best = max(((k, f) for k, f in fits.items() if v in k), key=lambda entry: entry[1].overlap)
-            raise Declined(
-                f"the views {views[i].name} and {views[j].name} overlap in {100 * best.overlap:.0f} % of their points, "
-                f"and {views[v].name} overlaps no other view more",
-                allowed=REMEDY,
-            )
+    across = {k: found for k, found in fits.items() if (k[0] in together) != (k[1] in together)}
+    if across:
+        i, j = max(across, key=lambda k: across[k].overlap)
+        raise Declined(
+            f"the views {views[i].name} and {views[j].name} overlap in only {100 * across[i, j].overlap:.0f} % of their "
+            f"points, and nothing else links {views[i].name} to {views[j].name}",
+            allowed=REMEDY,
+        )
 
 
 def _least_held(views: list[ViewSamples], motion: FloatArray, fits: dict[tuple[int, int], Fit]) -> str:
@@ -238,23 +238,24 @@ def _refuse_rival(
         theirs, their_rms = _told(views, other, scale)
         if theirs > RIVAL * against + RIVAL_FLOOR or their_rms > FARTHER * rms:
             continue
+        turns = {}
         for i, j in combinations(sorted(poses), 2):
             a, b = inverse(poses[i]) @ poses[j], inverse(other[i]) @ other[j]
-            if not alike(a, b, views[j], scale.size, ANOTHER):
-                cosine = 0.5 * (np.trace((inverse(a) @ b)[:3, :3]) - 1.0)
-                raise Declined(
-                    f"the views {views[i].name} and {views[j].name} fit in two ways, "
-                    f"{np.degrees(np.arccos(np.clip(cosine, -1.0, 1.0))):.0f} degrees apart, and nothing tells which "
-                    "is right",
-                    allowed="give the poses (scan.poses), or scan more of what makes the object's sides differ",
-                )
+            cosine = 0.5 * (np.trace((inverse(a) @ b)[:3, :3]) - 1.0)
+            turns[i, j] = float(np.degrees(np.arccos(np.clip(cosine, -1.0, 1.0))))
+        i, j = max(turns, key=lambda pair: turns[pair])
+        how = f", {turns[i, j]:.0f} degrees apart," if turns[i, j] > 1.0 else ", shifted on each other,"
+        raise Declined(
+            f"the views {views[i].name} and {views[j].name} fit in two ways{how} and nothing tells which is right",
+            allowed="give the poses (scan.poses), or scan more of what makes the object's sides differ",
+        )
 
 
 def _not_placed(views: list[ViewSamples], found: list[Candidate], ways: list[Assembly], scale: Scale) -> Declined:
     """The refusal for a view that fits nowhere: with which view it came nearest, and why that is not enough."""
     placed = set(ways[0].poses) if ways else {0}
     view = next(v for v in range(len(views)) if v not in placed)
-    tried = [c for c in found if view in (c.one, c.other)]
+    tried = [c for c in found if (c.one in placed) != (c.other in placed)]
     if not tried:
         other = 0 if view else 1
         return Declined(

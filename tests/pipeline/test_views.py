@@ -33,7 +33,7 @@ NO_FIT = (
     "contradict each other",
     "fit in two ways",
     "can slide on each other",
-    "overlap in ",
+    "overlap in only",
 )
 """What is seen of views that do not belong together depends on their shapes."""
 
