@@ -213,8 +213,8 @@ def _refuse_apart(views: list[ViewSamples], fits: dict[tuple[int, int], Fit]) ->
     if across:
         i, j = max(across, key=lambda k: across[k].overlap)
         raise Declined(
-            f"the views {views[i].name} and {views[j].name} overlap in only {100 * across[i, j].overlap:.0f} % of their "
-            f"points, and nothing else links {views[i].name} to {views[j].name}",
+            f"the views {views[i].name} and {views[j].name} overlap in only {100 * across[i, j].overlap:.0f} % of "
+            f"their points, and nothing else links {views[i].name} to {views[j].name}",
             allowed=REMEDY,
         )
 
