@@ -144,15 +144,15 @@ def without_motion(patches: Patches, fit: RigidFit, residuals: FloatArray) -> Fl
 
 
 def _degrees(variances: FloatArray, parts: FloatArray, expected: FloatArray, views: int) -> tuple[float, float]:
-    """Degrees of freedom 2 s^4 / var(s^2) of both variances (2,), between one and three for each view but one.
+    """Degrees of freedom 2 s^4 / var(s^2) of both variances (2,), between one and two for each view but one.
 
     A squared normal deviate of expectation E has the variance 2 E^2, so the information of all on the variances is
-    sum parts parts^T / (2 E^2). Three directions are taken as alike; the least allows that all motion was in one.
+    sum parts parts^T / (2 E^2). The least allows that all motion was in one direction; three alike are not believed.
     """
     weighed = parts / np.maximum(expected, 1e-300)[:, None]
     doubt = np.diag(np.linalg.pinv(0.5 * weighed.T @ weighed))
     nu = np.divide(2.0 * variances**2, doubt, out=np.zeros(2), where=doubt > 0)
-    shift, turn = np.clip(nu, views - 1.0, 3.0 * (views - 1.0))
+    shift, turn = np.clip(nu, views - 1.0, 2.0 * (views - 1.0))
     return float(shift), float(turn)
 
 

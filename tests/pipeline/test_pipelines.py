@@ -51,6 +51,11 @@ POCKETS = (
     "the membrane over it and by the tangents at its rim; the true pockets are deeper than either on one side, and "
     "the true centre of mass lies 0.3 to 0.4 mm (0.06 % of the length) beyond its bounds along y."
 )
+SETTLED = (
+    "The refined surface settles at once, yet keeps the rims of discs and holes too round (volume +0.12 %). The doubt of "
+    "the reconstruction is what still moves after the first round, which is next to nothing here, and the doubt of edges "
+    "does not hold the rest: truths lie up to 0.02 mm and 3e-6 kg m2 outside."
+)
 HOLES = (
     "The bottom of the side boss's blind bore and the neck under that boss were seen by no view: the surface closes "
     "them too early, by 0.26 and 0.20 % of the volume, and their brackets do not reach far enough. Both pull the "
@@ -132,6 +137,11 @@ JOBS = {
         underside="seen",
         observed=(0.99, 1.0),
         basis="views",
+        misses={
+            "center_of_mass_m.x": (0.00003, SETTLED),
+            "center_of_mass_m.y": (0.00001, SETTLED),
+            "principal.0": (0.000004, SETTLED),
+        },
         removed=frozenset({"outlier"}),
         notes=frozenset({SOLID, RANGE, COMMON}),
         # Two moments are 0.08 % apart: their axes turn by degrees in their plane for errors of this size.
@@ -260,7 +270,7 @@ def test_bounds_hold_their_value_and_say_something(job: str, result: MassResult)
     # No bound on a shape of which two thirds were seen is wider than a tenth of it, either way.
     assert result["volume_m3"]["low"] / result["volume_m3"]["value"] > 0.9
     assert result["volume_m3"]["high"] / result["volume_m3"]["value"] < 1.1
-    shares = [row["share_mass"] for row in result["budget"] if row["kind"] != "bracket"]
+    shares = [row["share_mass"] for row in result["budget"] if row["share_mass"] is not None]
     assert sum(shares) == pytest.approx(1.0, abs=1e-9)
 
 
