@@ -138,7 +138,8 @@ def test_a_sheet_and_a_line_are_called_so(sides, said):
 def test_refused_where_the_sides_cannot_be_told(case):
     name, n = {"walls too thin": ("thin closed box", 60_000), "cavity too coarse": ("hollow sphere", 500)}[case]
     points, _ = sampled(body(name), n)
-    with pytest.raises(Declined, match=r"^for \d+ % of the points outside cannot be told from inside; give a scan with"):
+    said = r"^for \d+ % of the points outside cannot be told from inside; give a scan with"
+    with pytest.raises(Declined, match=said):
         orient(cloud_of(points))
 
 

@@ -52,8 +52,8 @@ POCKETS = (
     "the true centre of mass lies 0.3 to 0.4 mm (0.06 % of the length) beyond its bounds along y."
 )
 SETTLED = (
-    "The refined surface settles at once, yet keeps the rims of discs and holes too round (volume +0.12 %). The doubt of "
-    "the reconstruction is what still moves after the first round, which is next to nothing here, and the doubt of edges "
+    "The refined surface settles at once, yet keeps the rims of discs and holes too round (volume +0.12 %). The doubt "
+    "of the reconstruction is what still moves after the first round, next to nothing here, and the doubt of edges "
     "does not hold the rest: truths lie up to 0.02 mm and 3e-6 kg m2 outside."
 )
 HOLES = (
