@@ -11,7 +11,7 @@ from scanmass.surface.check import thin_walls
 from scanmass.surface.close import close
 from scanmass.surface.mesh import FloatArray
 from scanmass.surface.reconstruct import reconstruct
-from scanmass.surface.refine import ROUNDS, refine
+from scanmass.surface.refine import refine
 from scanmass.surface.surface import Surface, Underside
 
 
@@ -29,8 +29,7 @@ def surface_from_cloud(
 ) -> Surface:
     """Reconstruct, refine, close and check; see each for what it does, needs and raises."""
     coarse = reconstruct(cloud, resolution=resolution, progress=progress)
-    once = refine(coarse, cloud, rounds=1)
-    refined = refine(once, cloud, rounds=ROUNDS - 1, progress=progress)
+    refined = refine(coarse, cloud, progress=progress)
     surface = close(
         refined,
         cloud,
@@ -42,7 +41,7 @@ def surface_from_cloud(
         edge_samples=edge_samples,
         progress=progress,
     )
-    # What refinement still changed after its first round, apart from what closing put in place of the unseen.
-    settling = polyhedron_moments(surface.vertices, surface.faces) - (refined.moments - once.moments)
+    # What refinement changed of the seen surface, apart from what closing put in place of the unseen.
+    settling = polyhedron_moments(surface.vertices, surface.faces) - (refined.moments - coarse.moments)
     surface = replace(surface, settling_moments=settling)
     return surface.noted(warnings=thin_walls(surface))

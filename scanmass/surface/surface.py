@@ -37,8 +37,8 @@ class Surface:
     ``source``: "points" (reconstructed) or "mesh" (the scan's own faces);
     ``resolution``: edge length of the reconstruction, or the median edge of a mesh, in metres;
     ``closures``: shapes that bracket what was not seen, empty where everything was;
-    ``settling_moments`` (10,): of the surface after its first round of refinement, or None; how far it still settled
-    since is the reconstruction's own doubt.
+    ``settling_moments`` (10,): of the surface before it was refined, or None; how far it settled is the
+    reconstruction's own doubt.
     """
 
     vertices: FloatArray

@@ -51,11 +51,6 @@ POCKETS = (
     "the membrane over it and by the tangents at its rim; the true pockets are deeper than either on one side, and "
     "the true centre of mass lies 0.3 to 0.4 mm (0.06 % of the length) beyond its bounds along y."
 )
-SETTLED = (
-    "The refined surface settles at once, yet keeps the rims of discs and holes too round (volume +0.12 %). The doubt "
-    "of the reconstruction is what still moves after the first round, next to nothing here, and the doubt of edges "
-    "does not hold the rest: truths lie up to 0.02 mm and 3e-6 kg m2 outside."
-)
 HOLES = (
     "The bottom of the side boss's blind bore and the neck under that boss were seen by no view: the surface closes "
     "them too early, by 0.26 and 0.20 % of the volume, and their brackets do not reach far enough. Both pull the "
@@ -137,11 +132,6 @@ JOBS = {
         underside="seen",
         observed=(0.99, 1.0),
         basis="views",
-        misses={
-            "center_of_mass_m.x": (0.00003, SETTLED),
-            "center_of_mass_m.y": (0.00001, SETTLED),
-            "principal.0": (0.000004, SETTLED),
-        },
         removed=frozenset({"outlier"}),
         notes=frozenset({SOLID, RANGE, COMMON}),
         # Two moments are 0.08 % apart: their axes turn by degrees in their plane for errors of this size.
