@@ -102,12 +102,11 @@ def bound(
     patched = patches.make(surface, cloud, centre=centre, count=_patch_count(cloud))
     model = _noise(surface, cloud, patched, wanted, coarse, seed)
     shapes = {"": parts} | {c.name: _closed(parts, translated(c.moments, -centre)) for c in surface.closures}
-    closed = len(shapes)
+    closed = dict(shapes)
     for other in model.alternatives:
         if other.beyond:
             change = on_outer_part(other.far[None], parts)[0]
-            moved = {f"{name}, {other.name}": replace(s, moments=s.moments + change) for name, s in shapes.items()}
-            shapes |= dict(list(moved.items())[:closed])
+            shapes |= {f"{name}, {other.name}": replace(s, moments=s.moments + change) for name, s in closed.items()}
 
     def carried(by: NoiseModel) -> tuple[tuple[Term, ...], dict[str, Replicates], dict[str, ShapeFigures]]:
         terms = _terms(surface, cloud, patched, by, wanted, parts, centre)
@@ -143,7 +142,7 @@ def bound(
         inertia=merged([f.inertia for f in figures.values()]),
         principal=merged([f.principal for f in figures.values()]),
         axes=axes_over(list(figures.values())),
-        budget=_budget(figures, closed, model, parts),
+        budget=_budget(figures, len(closed), model, parts),
         noise=model,
         parts=parts,
         centre=centre,

@@ -11,7 +11,7 @@ import numpy.typing as npt
 from scipy.optimize import nnls
 from scipy.spatial.distance import cdist
 
-from scanmass.uncertainty.following import shares_of
+from scanmass.uncertainty.following import against_mean
 from scanmass.uncertainty.patches import Patches
 
 FloatArray = npt.NDArray[np.float64]
@@ -22,7 +22,9 @@ _BINS = 24
 _LENGTHS = np.geomspace(0.01, 0.35, 16)
 _OUTLYING = 6.0 * 1.4826
 _DRAWS = 6
+"""Fields of each view that tell what motions take of them: with six views 36, some 6 % of a share of one half."""
 _WEAK = 1e-6
+"""Waves of a field below this share of the strongest are rounding."""
 _LEAST_KEPT = 0.4
 """A field of which less than this is left beside the motions is a motion, and counts as one."""
 
@@ -117,9 +119,7 @@ def _products(patches: Patches, clean: FloatArray) -> _Bins:
     incidence or one view is worse than the rest. Distances below 0.35 of the size.
     """
     used = np.isfinite(clean)
-    share = shares_of(np.where(used, patches.counts, 0.0))
-    r = np.nan_to_num(clean)
-    about = np.where(used, r - (share * r).sum(axis=1)[:, None], 0.0)
+    share, about = against_mean(clean, patches.counts)
     weight = share * patches.areas[:, None]
     both = weight @ weight.T
     expected = both * (1.0 + share @ share.T) - (weight * share) @ weight.T - weight @ (weight * share).T

@@ -68,13 +68,11 @@ def unfollowed(residuals: FloatArray, counts: FloatArray, weights: FloatArray) -
     own = np.einsum("jvv->jv", weights)
     share = shares_of(np.where(seen, counts, 0.0))
     seen &= own - share <= _OWN * (1.0 - share)
-    share = shares_of(np.where(seen, counts, 0.0))
+    share, about = against_mean(np.where(seen, residuals, np.nan), counts)
     both = seen[:, :, None] & seen[:, None, :]
     a = np.where(both, weights, 0.0)
     total = a.sum(axis=2, keepdims=True)
     a = np.divide(a, total, out=np.zeros_like(a), where=total > 0)
-    r = np.where(seen, residuals, 0.0)
-    about = np.where(seen, r - (share * r).sum(axis=1)[:, None], 0.0)
     identity = np.eye(residuals.shape[1])
     system = np.where(both, identity - a + share[:, None, :], identity)
     # Groups of views that follow one another and no other leave a direction that nothing tells of.
@@ -87,6 +85,17 @@ def shares_of(counts: FloatArray) -> FloatArray:
     total = counts.sum(axis=1, keepdims=True)
     result: FloatArray = np.divide(counts, total, out=np.zeros_like(counts), where=total > 0)
     return result
+
+
+def against_mean(residuals: FloatArray, counts: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Shares (J, V) of the views with a residual (J, V), and their residuals against their mean by those shares.
+
+    What all views of a patch have alike is gone from them; NaN residuals have no share and come out as 0.
+    """
+    seen = np.isfinite(residuals)
+    share = shares_of(np.where(seen, counts, 0.0))
+    r = np.where(seen, residuals, 0.0)
+    return share, np.where(seen, r - (share * r).sum(axis=1)[:, None], 0.0)
 
 
 def _corner_weights(points: FloatArray, vertices: FloatArray, faces: FaceArray, face: IndexArray) -> FloatArray:

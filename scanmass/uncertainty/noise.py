@@ -95,7 +95,7 @@ def from_views(patches: Patches, seed: int = 0) -> NoiseModel:
         own_field = replace(own_field, std=own_field.std / found**0.5)
     share, v = patches.shares(), patches.views
     covariances = (field_covariance(patches, own_field, share), *_pose_covariances(patches, rigid, share))
-    degrees = (min(_MOST_DEGREES, own_field.degrees_of_freedom), rigid.shift_degrees, rigid.turn_degrees)
+    degrees = (min(_MOST_DEGREES, own_field.degrees_of_freedom), v - 1.0, v - 1.0)
     stretch = _stretch(resample.covariance(patches), v - 1.0, covariances, degrees)
     names = ("scan noise", "view shifts", "view turns")
     parts = tuple(

@@ -16,6 +16,7 @@ IndexArray = npt.NDArray[np.int64]
 
 SOURCE = "pose or incidence error common to all views"
 _OUTWARD = 2.0
+"""Standard deviations of its own noise that a change is taken beyond itself: the bracket is to hold the truth."""
 _FACING = 0.3
 """Length of the mean normal of a view's points; half a ball seen from afar has 2/3, all of a ball 0."""
 _RARE = 0.02

@@ -7,7 +7,7 @@ import numpy.typing as npt
 
 from scanmass.seeds import stream
 from scanmass.uncertainty.distances import farthest_seeds
-from scanmass.uncertainty.following import shares_of
+from scanmass.uncertainty.following import against_mean
 from scanmass.uncertainty.patches import Patches
 
 FloatArray = npt.NDArray[np.float64]
@@ -43,18 +43,15 @@ def _added(patches: Patches, power: float) -> FloatArray:
     where the same views see all of a block, power 1 where the other views change from patch to patch (HC2 and HC3 of
     MacKinnon & White 1985, J. Econometrics 29:305). Zero where a view alone saw the patch.
     """
-    share, about = _against_mean(patches)
+    share, about = against_mean(_told(patches), patches.counts)
     alone = share >= 1.0 - 1e-9
     result: FloatArray = np.where(alone, 0.0, share * about / np.where(alone, 1.0, 1.0 - share) ** power)
     return result
 
 
-def _against_mean(patches: Patches) -> tuple[FloatArray, FloatArray]:
-    """Shares (J, V) of the views that say something, and their residuals against their mean."""
-    seen = patches.seen & np.isfinite(patches.residuals)
-    share = shares_of(np.where(seen, patches.counts, 0.0))
-    r = np.where(seen, np.nan_to_num(patches.residuals), 0.0)
-    return share, np.where(seen, r - (share * r).sum(axis=1)[:, None], 0.0)
+def _told(patches: Patches) -> FloatArray:
+    """Residuals (J, V), NaN where too few samples lie."""
+    return np.where(patches.seen, patches.residuals, np.nan)
 
 
 def _drawn(patches: Patches, sums: FloatArray, n: int, seed: int) -> FloatArray:
@@ -72,7 +69,7 @@ def covariance(patches: Patches) -> FloatArray:
     Each pair of patches weighs by what its products are short of for the mean that was taken off (:mod:`.field`), so
     it is unbiased if views err alike. With equal shares it is the variance of a mean of V views, with its V - 1.
     """
-    share, about = _against_mean(patches)
+    share, about = against_mean(_told(patches), patches.counts)
     both = share @ share.T
     left = both * (1.0 + both) - share**2 @ share.T - share @ (share**2).T
     product = (share * about) @ (share * about).T

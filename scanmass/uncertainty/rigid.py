@@ -25,7 +25,6 @@ class RigidFit:
 
     ``shift_std``, ``turn_std``: standard deviation per axis of a view's motion, None from least squares alone;
     ``incidence``: metres per unit cosine of incidence, common to all views, 0 where scanner places are unknown;
-    ``shift_degrees``, ``turn_degrees``: degrees of freedom of those standard deviations;
     ``solving`` (6 V, 6 V): from the right side of the normal equations to the motions, turns times the size;
     ``used`` (J, V): what took part; ``left`` (J, V): residuals without each view's motion, NaN where unseen.
     """
@@ -37,8 +36,6 @@ class RigidFit:
     left: FloatArray
     shift_std: float | None = None
     turn_std: float | None = None
-    shift_degrees: float | None = None
-    turn_degrees: float | None = None
     solving: FloatArray | None = None
 
     def field(self, patches: Patches) -> FloatArray:
@@ -119,7 +116,6 @@ def shrunk(patches: Patches, fit: RigidFit, together: FloatArray, alone: FloatAr
     for _ in range(10):
         weight = 1.0 / np.maximum(feigned + parts @ variances, 1e-300)
         variances, _ = nnls(parts * weight[:, None], (found**2 - feigned) * weight)
-    degrees = _degrees(variances, parts, feigned + parts @ variances, v)
     signal = parts @ variances
     share = np.divide(signal, signal + feigned, out=np.zeros_like(signal), where=signal > 0)
     result = _fit(patches, vectors @ (share * found), fit.incidence, fit.used)
@@ -128,8 +124,6 @@ def shrunk(patches: Patches, fit: RigidFit, together: FloatArray, alone: FloatAr
         result,
         shift_std=float(shift),
         turn_std=float(turn) / patches.size,
-        shift_degrees=degrees[0],
-        turn_degrees=degrees[1],
         solving=(vectors * (share / values)) @ vectors.T,
     )
 
@@ -141,19 +135,6 @@ def without_motion(patches: Patches, fit: RigidFit, residuals: FloatArray) -> Fl
     r = np.where(fit.used, residuals, 0.0)
     right = sum(k @ r[:, b] for b, k in enumerate(_right_side(patches, fit.used)))
     return residuals - effects_of(patches, fit.used, fit.solving @ right)
-
-
-def _degrees(variances: FloatArray, parts: FloatArray, expected: FloatArray, views: int) -> tuple[float, float]:
-    """Degrees of freedom 2 s^4 / var(s^2) of both variances (2,), between one and two for each view but one.
-
-    A squared normal deviate of expectation E has the variance 2 E^2, so the information of all on the variances is
-    sum parts parts^T / (2 E^2). The least allows that all motion was in one direction; three alike are not believed.
-    """
-    weighed = parts / np.maximum(expected, 1e-300)[:, None]
-    doubt = np.diag(np.linalg.pinv(0.5 * weighed.T @ weighed))
-    nu = np.divide(2.0 * variances**2, doubt, out=np.zeros(2), where=doubt > 0)
-    shift, turn = np.clip(nu, views - 1.0, 2.0 * (views - 1.0))
-    return float(shift), float(turn)
 
 
 def _solve(patches: Patches, used: npt.NDArray[np.bool_], with_incidence: bool) -> tuple[FloatArray, FloatArray]:
