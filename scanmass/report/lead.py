@@ -59,7 +59,7 @@ def _bounds(document: Document, mass: Ruler, length: Ruler) -> Iterator[str]:
         if not all(length.is_nothing(half) for half in halves):
             said.append(f"centre of mass known to ± {length.stds(halves, ' / ')} along x / y / z")
     if said:
-        yield f"Bounds: {', '.join(said)}, {share(document['level'])} of the time, given what is assumed below."
+        yield f"Bounds: {', '.join(said)}, at {share(document['level'])}, given what is assumed below."
 
 
 def _largest(document: Document, mass: Ruler, length: Ruler) -> list[str]:

@@ -113,7 +113,7 @@ _BRACKET = "Least and greatest over all it could be, taken alone. Not random: no
 def _level(document: Document) -> str:
     if wording.no_bound(document) is not None:
         return "Best figures only: no bound is claimed, so nothing is known of how far off they are."
-    return f"Bounds hold the true value {share(document['level'])} of the time, given what is assumed below."
+    return f"Bounds are at {share(document['level'])}, given what is assumed below; scanmass rehearse tries them."
 
 
 def _sign(document: Document) -> str:

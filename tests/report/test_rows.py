@@ -45,8 +45,8 @@ def test_the_first_lines_tell_bounds_basis_doubt_next_and_lift(document: Documen
     document["assumptions"].append({"code": "solid-throughout", "text": "Solid."})
     # The density's 0.2 kg times the reach 0.4 / (0.5 / 1.96) = 1.568: 0.31 kg; more than the bracket's 0.30 kg.
     assert _lead(document) == [
-        "Bounds: mass 6.50 to 7.50 kg, centre of mass known to ± 0.40 / 0.40 / 1.5 mm along x / y / z, 95 % of the "
-        "time, given what is assumed below.",
+        "Bounds: mass 6.50 to 7.50 kg, centre of mass known to ± 0.40 / 0.40 / 1.5 mm along x / y / z, at 95 %, "
+        "given what is assumed below.",
         "What was not seen is worth more than all other doubt of the centre of mass: scan it, or declare it.",
         "Basis: an upper bound; nothing tells the scan's noise, so all that could be noise is counted as noise. Two "
         "more scans would help.",
